@@ -1,0 +1,15 @@
+"""The one way to files that ship with the code: templates beside the checkout, or inside the wheel."""
+
+from importlib.resources import files
+from importlib.resources.abc import Traversable
+from pathlib import Path
+
+
+def shipped(*parts: str) -> Traversable:
+    """A shipped file or folder, such as `shipped("templates", "email")` or `shipped("catalogue")`."""
+    if parts[0] == "catalogue":
+        return files("rules").joinpath(*parts)
+    inside = files("service").joinpath("_shipped", *parts)
+    if inside.is_dir() or inside.is_file():
+        return inside
+    return Path(str(files("service"))).parent.joinpath(*parts)

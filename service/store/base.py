@@ -1,0 +1,133 @@
+"""The ground under every table: naming, column types, engines and the two kinds of transaction.
+
+SQLite and PostgreSQL hold the same rows. Times are whole microseconds since 1970 in UTC, so that they
+compare, index and round-trip alike on both; local days are dates.
+
+Reading and writing never mix: `Store.reading()` gives a snapshot, `Store.writing()` the one write lock
+(BEGIN IMMEDIATE on SQLite). No network or rendering work belongs inside either.
+"""
+
+import sqlite3
+from collections.abc import Iterator
+from contextlib import contextmanager
+from datetime import UTC, datetime, timedelta
+from pathlib import Path
+from typing import Any
+
+from sqlalchemy import BigInteger, Connection, Dialect, Engine, MetaData, create_engine, event, make_url
+from sqlalchemy.exc import ArgumentError, DBAPIError, OperationalError
+from sqlalchemy.types import TypeDecorator
+
+from service.errors import StoreBusy, StoreDown
+
+metadata = MetaData(
+    naming_convention={
+        "ix": "ix_%(column_0_N_label)s",
+        "uq": "uq_%(table_name)s_%(column_0_N_name)s",
+        "ck": "ck_%(table_name)s_%(constraint_name)s",
+        "fk": "fk_%(table_name)s_%(column_0_N_name)s_%(referred_table_name)s",
+        "pk": "pk_%(table_name)s",
+    }
+)
+
+EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
+_MICROSECOND = timedelta(microseconds=1)
+
+
+def micros(at: datetime) -> int:
+    """An aware time as the store holds it."""
+    return (at - EPOCH) // _MICROSECOND
+
+
+class UtcTime(TypeDecorator[datetime]):
+    """An aware datetime in UTC, held as whole microseconds."""
+
+    impl = BigInteger
+    cache_ok = True
+
+    def process_bind_param(self, value: datetime | None, dialect: Dialect) -> int | None:
+        if value is None:
+            return None
+        if value.tzinfo is None:
+            raise ValueError("the store takes only times with their zone")
+        return micros(value)
+
+    def process_result_value(self, value: int | None, dialect: Dialect) -> datetime | None:
+        return None if value is None else EPOCH + timedelta(microseconds=value)
+
+
+class Store:
+    """An open store. Give it to a step; the step decides whether it reads or writes."""
+
+    def __init__(self, engine: Engine) -> None:
+        self.engine = engine
+
+    @classmethod
+    def open(cls, url: str, busy_s: int = 30) -> "Store":
+        """Open the store at a URL; StoreDown with the remedy where that can't be done."""
+        try:
+            parsed = make_url(url)
+        except ArgumentError as error:
+            raise StoreDown(f"store.url {url!r} is not a database URL; see: leafturn init") from error
+        if parsed.get_backend_name() == "sqlite":
+            return cls(_sqlite(url, parsed.database, busy_s))
+        return cls(create_engine(parsed.set(drivername="postgresql+psycopg"), pool_pre_ping=True))
+
+    @property
+    def is_sqlite(self) -> bool:
+        return self.engine.dialect.name == "sqlite"
+
+    @contextmanager
+    def reading(self) -> Iterator[Connection]:
+        """One consistent view of the store."""
+        with _in_own_words(), self._connect(write=False) as connection, connection.begin():
+            yield connection
+
+    @contextmanager
+    def writing(self) -> Iterator[Connection]:
+        """The write transaction: all of it is kept, or none."""
+        with _in_own_words(), self._connect(write=True) as connection, connection.begin():
+            yield connection
+
+    def close(self) -> None:
+        self.engine.dispose()
+
+    def _connect(self, *, write: bool) -> Connection:
+        options: dict[str, Any] = {"leafturn_write": write}
+        if not self.is_sqlite and not write:
+            options["isolation_level"] = "REPEATABLE READ"
+        return self.engine.connect().execution_options(**options)
+
+
+def _sqlite(url: str, database: str | None, busy_s: int) -> Engine:
+    if database and database != ":memory:":
+        Path(database).parent.mkdir(parents=True, exist_ok=True)
+    engine = create_engine(url, connect_args={"timeout": busy_s})
+
+    @event.listens_for(engine, "connect")
+    def _set_up(connection: sqlite3.Connection, _record: object) -> None:
+        connection.isolation_level = None  # we say BEGIN ourselves
+        for pragma in ("journal_mode=WAL", "synchronous=FULL", "foreign_keys=ON"):
+            connection.execute(f"PRAGMA {pragma}")
+
+    @event.listens_for(engine, "begin")
+    def _begin(connection: Connection) -> None:
+        write = connection.get_execution_options().get("leafturn_write", True)
+        connection.exec_driver_sql("BEGIN IMMEDIATE" if write else "BEGIN")
+
+    return engine
+
+
+@contextmanager
+def _in_own_words() -> Iterator[None]:
+    """Outside errors become ours here and nowhere else."""
+    try:
+        yield
+    except OperationalError as error:
+        if "locked" in str(error) or "busy" in str(error):
+            raise StoreBusy("another process is writing to the store; try again in a moment") from error
+        raise StoreDown(f"the store did not answer: {error.orig}") from error
+    except DBAPIError as error:
+        if error.connection_invalidated:
+            raise StoreDown(f"the store closed the connection: {error.orig}") from error
+        raise
