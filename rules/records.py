@@ -248,6 +248,7 @@ class StationDay:
     arrived_at: datetime
     knowable_from: datetime
     digest: str
+    arrival_assumed: bool = False
 
 
 @dataclass(frozen=True, slots=True, eq=False)
