@@ -1,11 +1,13 @@
 """The rule book's own nouns: what the catalogue says, and which rules run."""
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from datetime import datetime
 from typing import Any
 
 from rules.records import Figures
+
+LIVE_MARKS = frozenset({"S", "C", "calc"})  # numbers from memory (M) are carried, but no reader is shown them
 
 
 @dataclass(frozen=True, slots=True)
@@ -36,6 +38,8 @@ class Threshold:
 class Lookalike:
     name: str
     apart: str
+    mark: str = ""
+    source: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -90,15 +94,19 @@ class Crop:
     scale: str
     stages: tuple[tuple[int, str], ...]
     seedling_to: int = 19
+    mark: str = ""
+    source: str = ""
 
 
 @dataclass(frozen=True, slots=True)
 class Caution:
-    """A sentence about looking safely, tied to what makes it needed."""
+    """A sentence about looking safely, tied to what makes it needed; `acting` marks the one about acting."""
 
     id: str
     text: str
-    when: tuple[str, ...]  # always, night, lifts_cover, warm, general
+    when: tuple[str, ...]  # always, night, lifts_cover, warm, dressed, acting
+    mark: str = ""
+    source: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -117,6 +125,7 @@ class Rule:
     why: str
     made_at: datetime | None
     hash: str
+    sources: Figures = field(default_factory=dict)  # parameter → its mark and source
 
 
 @dataclass(frozen=True, slots=True)
