@@ -1,13 +1,119 @@
-"""What a reader is told, before it has a shape: sentences, each with where it came from.
+"""What a reader is told, before it has a shape: as references that are kept, and as sentences.
+
+An edition keeps *statements* (figures and a wording key, shared by many readers) and one *slip* a
+reader (references to statements beside the reader's own values). Sentences are made from these and
+the rule book alone, so that the same references always say the same.
 
 An origin is `statement:<hash>` (an edition's statement), `catalogue:<pest>.<field>`, `caution:<id>`,
 `fixed:<key>` (a sentence that stands in every slip), `reader:<field>` (the reader's own values),
 `note` (the coordinator's), or `weather:<source>` (attribution).
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from datetime import date, datetime
 
-from rules.records import Ask
+from rules.digests import digest
+from rules.records import Ask, Evidence, Figures
+
+# --- kept ----------------------------------------------------------------------------------------
+
+
+@dataclass(frozen=True, slots=True)
+class Basis:
+    """A signal that a statement rests on, with the version of the rule that gave it."""
+
+    signal: str
+    rule: str
+    rule_hash: str
+
+
+@dataclass(frozen=True, slots=True)
+class Statement:
+    """One thing an edition says, to however many readers. `figures` hold JSON values only.
+
+    The hash covers what is said; the signals and rows it rests on are kept beside it.
+    """
+
+    hash: str
+    kind: str
+    pest: str
+    ask: Ask
+    wording: str
+    figures: Figures
+    basis: tuple[Basis, ...] = ()
+    evidence: tuple[Evidence, ...] = ()
+
+
+def statement_hash(kind: str, pest: str, ask: Ask, wording: str, figures: Figures) -> str:
+    """The name of a statement's content."""
+    return digest({"kind": kind, "pest": pest, "ask": ask, "wording": wording, "figures": figures})
+
+
+@dataclass(frozen=True, slots=True)
+class Line:
+    """One place in a slip: the statements it rests on, strongest first, and the reader's own values."""
+
+    statements: tuple[str, ...]
+    own: Figures
+
+
+@dataclass(frozen=True, slots=True)
+class Slip:
+    """One reader's part of an edition, as references. `own` holds what is counted around the reader."""
+
+    subscriber: str
+    asks: tuple[Line, ...]
+    mind: tuple[Line, ...]
+    around: tuple[Line, ...]
+    own: Figures
+
+
+@dataclass(frozen=True, slots=True)
+class Head:
+    """What every slip of an edition shares besides its statements."""
+
+    edition: str
+    district: str  # its name
+    day: date  # the local date it was drafted for
+    holdings_to_hide: int
+    warm_half: bool  # the warm half of the year, where cautions about heat belong
+    signed_by: str = ""
+    note: str = ""
+    attributions: tuple[str, ...] = ()  # of the weather's sources
+
+
+@dataclass(frozen=True, slots=True)
+class Edition:
+    """One district's digest for one week: draft, held, signed or sent."""
+
+    id: str  # "north-2026-W20"
+    district: str
+    week: str  # "2026-W20"
+    as_of: datetime
+    drafted_at: datetime
+    drafted_by: str
+    state: str = "draft"
+    note: str = ""
+    hold_reason: str | None = None
+    held_by: str | None = None
+    held_at: datetime | None = None
+    signed_at: datetime | None = None
+    signed_by: str | None = None
+    sent_at: datetime | None = None
+    sent_by: str | None = None
+    hashes: Figures = field(default_factory=dict)  # of rules, catalogue, templates and renderer
+
+
+@dataclass(frozen=True, slots=True)
+class Hold:
+    """Why one statement of an edition is kept from readers, by whom and since when."""
+
+    reason: str
+    by: str
+    at: datetime
+
+
+# --- said ----------------------------------------------------------------------------------------
 
 
 @dataclass(frozen=True, slots=True)
