@@ -1,0 +1,133 @@
+"""A slip's sentences take shape here: subject, plain text, HTML for mail, and the same digest as a page.
+
+The canonical form is the same bytes for the same view, templates and `RENDERER`: no clock, no set order, no
+address. Links stand as placeholders and are put in at sending.
+
+Parts that many readers share (a card, the general cautions, the foot) are macros; `Renderer` keeps what a
+macro made of a value and uses it again for the next reader. With `keep=0` it is plain Jinja2, and gives the
+same bytes.
+"""
+
+import hashlib
+import re
+from collections.abc import Callable, Iterator, Mapping
+from functools import cache, lru_cache
+from importlib.resources.abc import Traversable
+from typing import Any
+
+from jinja2 import Environment, FunctionLoader, StrictUndefined
+
+from rules.slip import SHOW_LINK, UNSUBSCRIBE_LINK, Rendered, SlipView
+from service.shipped import shipped
+
+RENDERER = "1"  # raise it when the same view and templates would give other bytes
+
+_PARTS = ("joined", "listed", "stacked", "small", "card")
+_SPACE = re.compile(r"\s+")
+# Control characters, lone surrogates, and the marks that reorder text beyond the name they came in; the
+# marks that only say "right-to-left starts here" (U+200E, U+200F, U+061C) stay.
+_UNSEEN = re.compile("[\x00-\x08\x0e-\x1b\x7f-\x84\x86-\x9f\u202a-\u202e\u2066-\u2069\ud800-\udfff]")
+_RULE = re.compile(r"^\.([\w-]+)\s*\{\s*([^}]*?)\s*\}", re.MULTILINE)
+_CLASSES = re.compile(r'class="([^"]+)"')
+
+
+@lru_cache(maxsize=50_000)
+def tidy(text: str) -> str:
+    """One line of text as it may stand in a mail: whoever wrote it can't break a line, a header or a link."""
+    line = _SPACE.sub(" ", _UNSEEN.sub("", text)).strip()
+    return line.replace("{{link:", "{{\u2060link:")  # a placeholder that a person typed is not a link
+
+
+class Renderer:
+    """Renders slips, and keeps up to `keep` shared parts of each kind for the next one."""
+
+    def __init__(self, keep: int = 10_000) -> None:
+        inline = _inline_rules(_source("email/_inline.css"))
+        self._subject, _ = _shape("email/digest/subject.txt", None, 0, {})
+        self._text, self._text_parts = _shape("email/digest/body.txt", "email/digest/_parts.txt", keep, {})
+        self._html, self._html_parts = _shape("email/digest/body.html", "email/digest/_parts.html", keep, inline)
+        self._page, _ = _shape("web/digest.html", None, 0, {})
+
+    def render(self, view: SlipView) -> Rendered:
+        """The canonical subject, text and HTML of one slip, with link placeholders."""
+        return Rendered(
+            subject=self._subject.render(view=view).strip(),
+            text=self._text.render(self._text_parts, view=view),
+            html=self._html.render(self._html_parts, view=view),
+        )
+
+    def page(self, view: SlipView) -> str:
+        """The same digest as a page, with what stands behind each card one tap away."""
+        return str(self._page.render(view=view))
+
+
+def render(view: SlipView) -> Rendered:
+    """The canonical subject, text and HTML of one slip, with link placeholders."""
+    return _renderer().render(view)
+
+
+def page(view: SlipView) -> str:
+    """One slip as a page, with what stands behind each card one tap away."""
+    return _renderer().page(view)
+
+
+@cache
+def _renderer() -> Renderer:
+    return Renderer()
+
+
+@cache
+def templates_hash() -> str:
+    """The short hash of every template that the canonical form is made with, and of its name."""
+    seen = hashlib.sha256()
+    for name, content in sorted(_files(shipped("templates", "email"), "")):
+        seen.update(f"{name}\n{len(content)}\n".encode() + content)
+    return seen.hexdigest()[:32]
+
+
+def _files(folder: Traversable, above: str) -> Iterator[tuple[str, bytes]]:
+    for entry in folder.iterdir():
+        name = f"{above}/{entry.name}"
+        if entry.is_dir():
+            yield from _files(entry, name)
+        else:
+            yield name, entry.read_bytes()
+
+
+def _source(name: str) -> str:
+    return shipped("templates", *name.split("/")).read_text(encoding="utf-8")
+
+
+def _shape(body: str, parts: str | None, keep: int, inline: Mapping[str, str]) -> tuple[Any, dict[str, Any]]:
+    """A template, and what its names stand for: the links, and its parts, kept or made anew each time."""
+    environment = Environment(
+        loader=FunctionLoader(lambda name: _inlined(_source(name), inline)),
+        autoescape=not body.endswith(".txt"),
+        undefined=StrictUndefined,
+        auto_reload=False,
+        trim_blocks=False,
+    )
+    environment.filters["tidy"] = tidy
+    environment.globals |= {"show_link": SHOW_LINK, "unsubscribe_link": UNSUBSCRIBE_LINK}
+    macros = environment.get_template(parts).module if parts else None
+    made = {name: getattr(macros, name) for name in _PARTS if hasattr(macros, name)}
+    return environment.get_template(body), {name: _kept(macro, keep) for name, macro in made.items()}
+
+
+def _kept(macro: Callable[..., str], keep: int) -> Callable[..., str]:
+    return lru_cache(maxsize=keep)(macro) if keep else macro
+
+
+def _inline_rules(sheet: str) -> dict[str, str]:
+    return dict(_RULE.findall(sheet))
+
+
+def _inlined(source: str, rules: Mapping[str, str]) -> str:
+    """The template with each class's rule written beside it, since many mail readers drop <style>."""
+    if not rules:
+        return source
+    return _CLASSES.sub(lambda found: f'{found[0]} style="{_declarations(found[1], rules)}"', source)
+
+
+def _declarations(names: str, rules: Mapping[str, str]) -> str:
+    return " ".join(rules[name] for name in names.split()).replace('"', "'")
