@@ -109,6 +109,8 @@ def _pest(file: Traversable, crops: Mapping[str, Crop]) -> Pest:
             _known(file, text, (table, i, "crops"), span.crops, crops)
     flags = ("edge_first", "night", "lifts_cover", "dry_soil_uninformative")
     sourced = ("damage", "where", "before_up", "method", "spots", "units_per_spot", "minutes", "relook_days")
+    alike: dict[str, Any] = {name: getattr(shape, name).value for name in flags}
+    alike |= {name: _sourced(getattr(shape, name)) for name in sourced}
     return Pest(
         id=shape.id,
         name=shape.names.one,
@@ -125,8 +127,7 @@ def _pest(file: Traversable, crops: Mapping[str, Crop]) -> Pest:
         ),
         beneficials=_sourced(shape.beneficials),
         notes=tuple(_sourced(each) for each in shape.notes),
-        **{name: getattr(shape, name).value for name in flags},
-        **{name: _sourced(getattr(shape, name)) for name in sourced},
+        **alike,
     )
 
 
