@@ -41,12 +41,17 @@ class Row:
     def refuse(self, name: str, remedy: str) -> None:
         self.refusals.append(Refusal(self.number, name, self.cells.get(name, ""), remedy))
 
+    def given(self, name: str, *, needed: bool = False) -> str:
+        """What stands in the cell, without spaces around it; empty cells that must be filled are refused."""
+        value = self.cells.get(name, "").strip()
+        if not value and needed:
+            self.refuse(name, "is empty; fill it in")
+        return value
+
     def text(self, name: str, *, needed: bool = False) -> str | None:
         """A cell of plain words."""
-        value = self.cells.get(name, "").strip()
+        value = self.given(name, needed=needed)
         if not value:
-            if needed:
-                self.refuse(name, "is empty; fill it in")
             return None
         fault = unsafe(value)
         if fault:
@@ -64,9 +69,9 @@ class Row:
 
     def number_in(self, name: str, low: float, high: float, *, needed: bool = False) -> float | None:
         """A number between two bounds, both allowed."""
-        value = self.cells.get(name, "").strip()
+        value = self.given(name, needed=needed)
         if not value:
-            return self._empty(name, needed)
+            return None
         try:
             number = float(value)
         except ValueError:
@@ -78,9 +83,9 @@ class Row:
 
     def day(self, name: str, *, needed: bool = False) -> date | None:
         """A day of the calendar as YYYY-MM-DD."""
-        value = self.cells.get(name, "").strip()
+        value = self.given(name, needed=needed)
         if not value:
-            return self._empty(name, needed)
+            return None
         try:
             return _iso_day(value)
         except ValueError:
@@ -89,7 +94,7 @@ class Row:
 
     def moment(self, name: str) -> datetime | None:
         """A time with its offset from UTC, such as 2026-05-04T09:30+09:30."""
-        value = self.cells.get(name, "").strip()
+        value = self.given(name)
         if not value:
             return None
         try:
@@ -125,10 +130,6 @@ class Row:
             return value
         self.refuse(name, "write one e-mail address, such as name@example.org")
         return None
-
-    def _empty(self, name: str, needed: bool) -> None:
-        if needed:
-            self.refuse(name, "is empty; fill it in")
 
 
 def unsafe(value: str) -> str | None:

@@ -27,6 +27,7 @@ from sqlalchemy import (
     insert,
     select,
 )
+from sqlalchemy.dialects import postgresql, sqlite
 
 from rules.digests import digest
 from rules.records import Station, StationDay
@@ -195,4 +196,8 @@ def blocks(c: Connection, keys: Sequence[str]) -> dict[str, Block]:
 
 def save_blocks(c: Connection, records: Sequence[Block]) -> None:
     """Keep blocks; one that is there already is replaced, since only an altered one is worked out again."""
-    save(c, weather_block, [{name: getattr(r, name) for name in Block.__dataclass_fields__} for r in records])
+    dialect = postgresql if c.dialect.name == "postgresql" else sqlite
+    added = dialect.insert(weather_block)
+    replaced = {name: added.excluded[name] for name in ("content", "data")}
+    values = [{name: getattr(record, name) for name in Block.__dataclass_fields__} for record in records]
+    c.execute(added.on_conflict_do_update(index_elements=["key"], set_=replaced), values)
