@@ -1,0 +1,84 @@
+"""What the signals of a week let an edition say, and from where each statement reaches readers."""
+
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass
+from datetime import date
+from typing import Any
+
+from rules.digests import plain
+from rules.records import Ask, Known, Signal
+from rules.slip import Basis, Statement, statement_hash
+from service.editions.privacy import View
+
+HAPPENED = {"hatch": "met_day", "threshold": "day", "first_seen": "day"}  # the figure that says when
+
+
+@dataclass(frozen=True, slots=True)
+class Offer:
+    """A statement with the places or the paddock from which it reaches readers."""
+
+    statement: Statement
+    day: date
+    cells: frozenset[int] = frozenset()  # weather: readers with a paddock or postcode in one of these
+    spot: int | None = None  # the public cell of someone's find
+    paddock: str | None = None
+    finders: frozenset[str] = frozenset()
+
+
+def offers(signals: Sequence[Signal], known: Known, seen: View) -> list[Offer]:
+    """All that may be said; nothing of anyone's rows but their public cell, save to themselves."""
+    return [offer for signal in signals for offer in _offers(signal, known, seen)]
+
+
+def _offers(signal: Signal, known: Known, seen: View) -> Iterator[Offer]:
+    """What a signal lets an edition say, and to whom. Nothing of others' rows but its public cell."""
+    day = date.fromisoformat(str(plain(signal.figures)[HAPPENED[signal.kind]]))
+    if signal.kind == "hatch":
+        yield Offer(_statement(signal, "hatch", signal.figures), day, frozenset(signal.cells))
+    elif signal.kind == "threshold":
+        exact = {**signal.figures, "paddock": signal.paddock}
+        yield Offer(_statement(signal, "count", exact), day, paddock=signal.paddock)
+        if seen.shown and signal.figures["mean"]:
+            # The same for every verdict: which number a count meets would tell which crop it was in.
+            spot = seen.public(_cell(signal, known))
+            near = _statement(signal, "counted_near", {"spot": spot}, Ask.LOOK)
+            yield Offer(near, day, spot=spot, paddock=signal.paddock)
+    elif seen.shown:
+        yield _first_seen(signal, day, known, seen)
+
+
+def _first_seen(signal: Signal, day: date, known: Known, seen: View) -> Offer:
+    """The season's first find, without its day, which could give away who was in the paddock."""
+    spot = seen.public(int(signal.figures["cell"]))
+    figures = {name: value for name, value in signal.figures.items() if name not in ("cell", "day")}
+    keys = {each.id for each in signal.evidence}
+    rows = [row for row in known.observations if row.key in keys and row.present and row.day == day]
+    finders = frozenset(row.reporter for row in rows) | {row.paddock for row in rows if row.paddock}
+    return Offer(_statement(signal, "first_seen", {**figures, "spot": spot}), day, spot=spot, finders=finders)
+
+
+def _cell(signal: Signal, known: Known) -> int:
+    return known.paddocks[signal.paddock].place.cell if signal.paddock in known.paddocks else signal.cells[0]
+
+
+def _statement(signal: Signal, wording: str, figures: Mapping[str, Any], ask: Ask | None = None) -> Statement:
+    said = plain(figures)
+    name = statement_hash(signal.kind, signal.pest, ask or signal.ask, wording, said)
+    basis = (Basis(signal.id, signal.rule, signal.rule_hash),)
+    return Statement(name, signal.kind, signal.pest, ask or signal.ask, wording, said, basis, signal.evidence)
+
+
+def joined(statements: Sequence[Statement]) -> dict[str, Statement]:
+    """Statements by hash; two that say the same are one, resting on both signals' rows."""
+    joined: dict[str, Statement] = {}
+    for each in statements:
+        same = joined.get(each.hash)
+        joined[each.hash] = each if same is None else _both(same, each)
+    return dict(sorted(joined.items()))
+
+
+def _both(one: Statement, other: Statement) -> Statement:
+    basis = sorted({*one.basis, *other.basis}, key=lambda each: each.signal)
+    rows = {(row.table, row.id, row.version): row for row in (*one.evidence, *other.evidence)}
+    evidence = tuple(rows[key] for key in sorted(rows))
+    return Statement(one.hash, one.kind, one.pest, one.ask, one.wording, one.figures, tuple(basis), evidence)
