@@ -1,0 +1,1 @@
+"""What comes in from people: observations, and the files of the network."""
