@@ -22,7 +22,7 @@ from service.shipped import shipped
 
 RENDERER = "1"  # raise it when the same view and templates would give other bytes
 
-_PARTS = ("joined", "listed", "stacked", "small", "card")
+_PARTS = ("opening", "before", "card", "kept_in_mind", "part", "closing")
 _SPACE = re.compile(r"\s+")
 # Control characters, lone surrogates, and the marks that reorder text beyond the name they came in; the
 # marks that only say "right-to-left starts here" (U+200E, U+200F, U+061C) stay.
@@ -110,7 +110,7 @@ def _shape(body: str, parts: str | None, keep: int, inline: Mapping[str, str]) -
     environment.filters["tidy"] = tidy
     environment.globals |= {"show_link": SHOW_LINK, "unsubscribe_link": UNSUBSCRIBE_LINK}
     macros = environment.get_template(parts).module if parts else None
-    made = {name: getattr(macros, name) for name in _PARTS if hasattr(macros, name)}
+    made = {name: getattr(macros, name) for name in _PARTS if macros}
     return environment.get_template(body), {name: _kept(macro, keep) for name, macro in made.items()}
 
 
