@@ -5,6 +5,7 @@ history/season1,2/  two past seasons: paddocks as sown, observations, weather
 season3/2026-Wnn/   what came in since the week before, up to the week's cut-off
 """
 
+import shutil
 from collections import defaultdict
 from collections.abc import Iterable
 from pathlib import Path
@@ -17,27 +18,42 @@ from demo_network.network import DISTRICTS
 from demo_network.planted import EVENTS, NAMES
 from demo_network.seasons import HISTORY, LIVE, SEASONS, arrival_week
 from demo_network.streams import row_id
+from service.errors import Refused
 
 SEED = 20260215
+PARTS, MARK = ("network", "history", "season3"), "INVENTED.txt"
 ARRIVAL_UNKNOWN = 0.3  # share of the oldest season's rows that came without a note of when they arrived
 
 
 def build(folder: Path, *, seed: int = SEED, without: frozenset[str] = frozenset()) -> None:
     """Write the whole network into a folder; `without` names planted events to leave out.
 
-    The same seed writes the same bytes. Leaving an event out changes only that event's rows.
+    The same seed writes the same bytes. Leaving an event out changes only that event's rows. What an
+    earlier build left in the folder is removed.
     """
     unknown = without - NAMES
     if unknown:
         raise ValueError(
             f"no planted event is called {', '.join(sorted(unknown))}; there are {', '.join(sorted(NAMES))}"
         )
+    _make_room(folder)
     world = farming.invent(seed)
     events = tuple(event for event in EVENTS if event.name not in without)
     _network(folder / "network", world)
     _paddocks(folder, world)
     _dated(folder, world, "observations", _observations(world, events))
     _dated(folder, world, "station_days", _station_days(world, events))
+
+
+def _make_room(folder: Path) -> None:
+    """An empty folder, or one that an earlier build filled; nobody else's files are removed."""
+    mark = folder / MARK
+    if folder.exists() and any(folder.iterdir()) and not mark.exists():
+        raise Refused(f"{folder} holds files that the demo did not write; name an empty folder")
+    for part in PARTS:
+        shutil.rmtree(folder / part, ignore_errors=True)
+    folder.mkdir(parents=True, exist_ok=True)
+    mark.write_text("Everything in this folder is invented; building again replaces it.\n", encoding="utf-8")
 
 
 def _network(folder: Path, world: World) -> None:

@@ -7,8 +7,8 @@ from datetime import date, timedelta
 
 import numpy as np
 
+from demo_network import settle
 from demo_network.network import Network, Paddock
-from demo_network.network import invent as invent_network
 from demo_network.seasons import SEASONS
 from demo_network.streams import stream
 
@@ -75,7 +75,7 @@ class World:
 
 def invent(seed: int) -> World:
     """The world of that seed, before anybody looks."""
-    network = invent_network(seed)
+    network = settle.invent(seed)
     return World(network, _plans(network, seed), seed)
 
 

@@ -125,13 +125,15 @@ def busy_week(event: Event, world: World) -> list[Row]:
 
 
 def one_reporter(event: Event, world: World) -> list[Row]:
-    """One grower reports damage on the same few paddocks day after day, with no counts."""
+    """One grower reports damage on their own paddocks and the neighbours', day after day, with no counts."""
     people = {habit.person.id for habit in habits(world.network, world.seed, event.district)}
-    grower = next(id for p in _nearest(event, world) if (id := world.network.grower_of(p)) in people)
+    nearest = _nearest(event, world)
+    grower = next(id for paddock in nearest if (id := world.network.grower_of(paddock)) in people)
+    around = list(dict.fromkeys([*world.network.own(grower), *nearest]))[:6]
     found = [
         _row(world, paddock, MITE, day, grower, DAMAGE) | {"damage": "silver leaves", "confidence": "fairly sure"}
         for day in days_of(event.weeks[0])
-        for paddock in world.network.own(grower)
+        for paddock in around
     ]
     return _numbered(event, world, found)
 

@@ -6,8 +6,9 @@ import numpy as np
 
 from demo_network import names
 from demo_network.farming import World
-from demo_network.network import DISTRICTS, STAFF, Holding, Network
+from demo_network.network import DISTRICTS, Holding, Network
 from demo_network.seasons import LIVE
+from demo_network.settle import STAFF
 from demo_network.streams import stream
 
 EACH, PARTNERS = 150, 30  # readers in a district, and how many of them share another reader's holding

@@ -9,7 +9,7 @@ HISTORY = {2024: "season1", 2025: "season2"}
 LIVE = 2026
 SEASONS = (*HISTORY, LIVE)
 WEEKS = tuple(f"{LIVE}-W{number:02d}" for number in range(10, 31))
-SIGNED = tuple(f"{LIVE}-W{number:02d}" for number in (13, 15, 17, 19, 20, 21, 22, 24, 26, 28))
+SIGNED = tuple(f"{LIVE}-W{number:02d}" for number in (13, 15, 18, 19, 20, 21, 22, 23, 26, 28))
 
 
 def opens(year: int) -> date:

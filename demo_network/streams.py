@@ -5,12 +5,12 @@ import hashlib
 import numpy as np
 
 
-def stream(seed: int, *names: str | int) -> np.random.Generator:
+def stream(seed: int, *names: object) -> np.random.Generator:
     """The stream of that name; the same seed and name give the same numbers, whatever else was drawn."""
     return np.random.default_rng(np.random.SeedSequence([seed, *_words("/".join(map(str, names)))]))
 
 
-def row_id(seed: int, *names: str | int) -> str:
+def row_id(seed: int, *names: object) -> str:
     """An identity for one row that says nothing about where the row came from."""
     key = "/".join(map(str, (seed, *names)))
     return hashlib.sha256(key.encode()).hexdigest()[:12]
