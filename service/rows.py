@@ -11,7 +11,7 @@ import io
 import math
 import re
 import unicodedata
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass, field
 from datetime import date, datetime
 from difflib import get_close_matches
@@ -81,6 +81,14 @@ class Row:
         self.refuse(name, f"write a number from {low:g} to {high:g}, with a point, or leave it empty")
         return None
 
+    def whole(self, name: str, low: int, high: int, *, needed: bool = False) -> int | None:
+        """A whole number between two bounds, both allowed."""
+        value = self.number_in(name, low, high, needed=needed)
+        if value is None or value == int(value):
+            return None if value is None else int(value)
+        self.refuse(name, f"write a whole number from {low} to {high}")
+        return None
+
     def day(self, name: str, *, needed: bool = False) -> date | None:
         """A day of the calendar as YYYY-MM-DD."""
         value = self.given(name, needed=needed)
@@ -145,10 +153,11 @@ def unsafe(value: str) -> str | None:
     return None
 
 
-def nearest(value: str, known: Sequence[str]) -> str:
-    """A hint for a misspelt word: "; did you mean …?", or nothing."""
-    close = get_close_matches(value.lower(), known, n=1, cutoff=0.6)
-    return f"; did you mean {close[0]}?" if close else ""
+def nearest(value: str, known: Iterable[str]) -> str:
+    """A hint for a misspelt word: " (did you mean …?)", or nothing."""
+    spelt = {word.lower(): word for word in known}
+    close = get_close_matches(value.lower(), spelt, n=1, cutoff=0.6)
+    return f" (did you mean {spelt[close[0]]}?)" if close else ""
 
 
 def _iso_day(value: str) -> date:
@@ -217,9 +226,9 @@ def in_words(path: Path, refusals: Sequence[Refusal]) -> str:
 
 
 def once(rows: Sequence[Row], key: Callable[[Row], object], name: str) -> None:
-    """Refuse each row whose key an earlier row has."""
+    """Refuse each row whose key an earlier row has; rows that are refused already are left aside."""
     seen: dict[object, int] = {}
-    for row in rows:
+    for row in [row for row in rows if not row.refusals]:
         first = seen.setdefault(key(row), row.number)
         if first != row.number:
             row.refuse(name, f"row {first} is the same one; keep one of the two")

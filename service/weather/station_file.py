@@ -37,8 +37,8 @@ def take_station_days(store: Store, path: Path, *, clock: Clock, history: bool =
             for district in network.districts(c)
             for station in weather.stations(c, district.id)
         }
-    found = [_record(row, zones, now, history) for row in table]
-    rows.once(table, lambda row: (row.cells["station"].strip(), row.cells["day"].strip()), "day")
+    found = [_record(row, zones, now, history) for row in table if not row.refusals]
+    rows.once(table, lambda row: (row.given("station"), row.given("day")), "day")
     rows.finish(path, table)
     with store.writing() as c:
         counts = weather.add_station_days(c, [record for record in found if record], corrected_at=now)

@@ -1,0 +1,129 @@
+"""What the store already knows of the network, and whether a row fits it.
+
+Ids are unique over all districts, so that a row of one district can't take over another's.
+"""
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from datetime import date, datetime
+from typing import Any
+
+from rules.records import District, Holding, Paddock, Person, Place, Postcode, Station, Subscriber
+from service.places import distance_km
+from service.rows import Row, nearest
+from service.store import network, weather
+
+FARTHEST_KM = 1000.0  # no district is that wide; a swapped or unsigned coordinate lies farther off
+
+
+@dataclass(frozen=True, slots=True)
+class Network:
+    """Everything that is known, by id; postcodes by district and code."""
+
+    districts: Mapping[str, District]
+    postcodes: Mapping[str, Postcode]
+    holdings: Mapping[str, Holding]
+    paddocks: Mapping[str, Paddock]
+    people: Mapping[str, Person]
+    subscribers: Mapping[str, Subscriber]
+    stations: Mapping[str, Station]
+
+
+def load(c: Any, as_of: datetime) -> Network:
+    """Read the network of all districts over an open connection."""
+    districts = {district.id: district for district in network.districts(c)}
+
+    def each(read: Callable[..., list[Any]], *options: Any) -> dict[str, Any]:
+        return {key_of(record): record for district in districts for record in read(c, district, *options)}
+
+    return Network(
+        districts=districts,
+        postcodes=each(network.postcodes),
+        holdings=each(network.holdings, date.max),
+        paddocks=each(network.paddocks, as_of),
+        people=each(network.people),
+        subscribers=each(network.subscribers, None),
+        stations=each(weather.stations),
+    )
+
+
+def key_of(record: Any) -> str:
+    """What tells a record from the others of its kind."""
+    return f"{record.district} {record.code}" if isinstance(record, Postcode) else str(record.id)
+
+
+# --- checks: each refuses the row where a reference does not hold -------------------------------
+
+
+def check(row: Row, record: Any, known: Network, kind: str) -> None:
+    """Everything that a row of this kind refers to must be there, and in the row's own district."""
+    if record.district not in known.districts:
+        hint = nearest(record.district, sorted(known.districts))
+        row.refuse("district", f"is no district we know{hint}; take the district file first")
+        return
+    before = getattr(known, kind).get(key_of(record))
+    if before is not None and before.district != record.district:
+        row.refuse("id", "is in use in another district; choose an id of its own")
+    place = getattr(record, "place", None)
+    if place is not None:
+        _near(row, place, known.districts[record.district])
+    if kind in _SPECIAL:
+        _SPECIAL[kind](row, record, known)
+
+
+def _near(row: Row, place: Place, district: District) -> None:
+    if distance_km(place.latitude, place.longitude, district.latitude, district.longitude) > FARTHEST_KM:
+        remedy = f"lies more than {FARTHEST_KM:g} km from the district; swapped with longitude, or a sign missing?"
+        row.refuse("latitude", remedy)
+
+
+def _paddock(row: Row, record: Paddock, known: Network) -> None:
+    if not _there(row, "holding", record.holding, known.holdings, record.district, "holdings"):
+        return
+    others = [
+        reader.id
+        for reader in known.subscribers.values()
+        if record.id in reader.paddocks and reader.holding != record.holding
+    ]
+    if others:
+        row.refuse(
+            "holding",
+            f"readers of another holding have this paddock as their own ({', '.join(sorted(others))}); "
+            "take a subscribers file without it first",
+        )
+
+
+def _subscriber(row: Row, record: Subscriber, known: Network) -> None:
+    if f"{record.district} {record.postcode}" not in known.postcodes:
+        codes = [postcode.code for postcode in known.postcodes.values() if postcode.district == record.district]
+        row.refuse("postcode", f"is no postcode of this district{nearest(record.postcode, codes)}; take it first")
+    _there(row, "holding", record.holding, known.holdings, record.district, "holdings")
+    _there(row, "person", record.person, known.people, record.district, "people")
+    for id in record.paddocks:
+        paddock = known.paddocks.get(id)
+        if paddock is None:
+            row.refuse("paddocks", f"{id} is no paddock we know; take the paddocks file first")
+        elif record.holding is None or paddock.holding != record.holding:
+            row.refuse("paddocks", f"{id} does not belong to this reader's holding; mend one of the two")
+    _not_left(row, record, known)
+
+
+def _not_left(row: Row, record: Subscriber, known: Network) -> None:
+    """An address that asked to be left alone does not come back under another id."""
+    address = record.email.casefold()
+    for other in known.subscribers.values():
+        if other.id != record.id and other.state == "left" and other.email.casefold() == address:
+            row.refuse("email", "has left the digest, and only its owner can come back; take this row out")
+            return
+
+
+def _there(row: Row, name: str, id: str | None, known: Mapping[str, Any], district: str, file: str) -> bool:
+    """Whether a reference, if there is one, leads to a record of the same district."""
+    if id is None or (id in known and known[id].district == district):
+        return True
+    hint = nearest(id, sorted(key for key, record in known.items() if record.district == district))
+    row.refuse(name, f"is not known in this district{hint}; take the {file} file first")
+    return False
+
+
+_SPECIAL: Mapping[str, Callable[[Row, Any, Network], None]] = {"paddocks": _paddock, "subscribers": _subscriber}
