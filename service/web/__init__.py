@@ -1,0 +1,1 @@
+"""The pages that mailed links lead to; they ask the pipeline, and decide nothing."""
