@@ -65,9 +65,9 @@ def compose(
     for statement in counted:
         if statement.hash not in held:
             by_pest[statement.pest].append(statement)
-    spots = {spot for spot in seen.spots.values() if spot is not None}
-    spots |= {offer.spot for offer in offered if offer.spot is not None}
-    scene = Scene(known, book, seen, Stages(known), said, by_pest, sorted(spots))
+    spots = {spot for there in seen.tallies.values() for spot in there} | {offer.spot for offer in offered}
+    placed = sorted(spot for spot in spots if spot is not None)
+    scene = Scene(known, book, seen, Stages(known), said, by_pest, placed)
     return Composed(statements, {reader.id: _slip(reader, scene) for reader in readers})
 
 
@@ -100,7 +100,7 @@ def _slip(reader: Subscriber, scene: Scene) -> Slip:
     stirring = [each for each in candidates if _stirs(each, awake[each.pest])]
     bundles = rank.merge(stirring, awake, known.today)
     asks, mind = rank.choose(bundles, {id: pest.minutes.value for id, pest in scene.book.pests.items()})
-    kept = [_mind(bundle) for bundle in mind] + [_resting(pest, day) for pest, day in resting.items()]
+    kept = [_mind(bundle, scene) for bundle in mind] + [_resting(pest, day) for pest, day in resting.items()]
     return Slip(
         reader.id,
         tuple(_ask(bundle, seat, scene) for bundle in asks),
@@ -220,9 +220,12 @@ def _near_value(near: Near) -> list[Any] | str | None:
     return None if near.band_km is None else [near.band_km, near.direction, near.doubt_km]
 
 
-def _mind(bundle: Bundle) -> Line:
+def _mind(bundle: Bundle, scene: Scene) -> Line:
     first = bundle.candidates[0]
-    return Line((first.statement,), _stand_values(bundle.stands) | {"near": [_near_value(first.near)]})
+    own = _stand_values(bundle.stands) | {"near": [_near_value(first.near)]}
+    if first.paddock:
+        own["paddock"] = scene.known.paddocks[first.paddock].name
+    return Line((first.statement,), own)
 
 
 def _resting(pest: str, until: date) -> Line:

@@ -58,7 +58,8 @@ def _first_seen(signal: Signal, day: date, known: Known, seen: View) -> Offer:
 
 
 def _cell(signal: Signal, known: Known) -> int:
-    return known.paddocks[signal.paddock].place.cell if signal.paddock in known.paddocks else signal.cells[0]
+    paddock = known.paddocks.get(signal.paddock or "")
+    return signal.cells[0] if paddock is None else paddock.place.cell
 
 
 def _statement(signal: Signal, wording: str, figures: Mapping[str, Any], ask: Ask | None = None) -> Statement:
@@ -70,11 +71,11 @@ def _statement(signal: Signal, wording: str, figures: Mapping[str, Any], ask: As
 
 def joined(statements: Sequence[Statement]) -> dict[str, Statement]:
     """Statements by hash; two that say the same are one, resting on both signals' rows."""
-    joined: dict[str, Statement] = {}
+    found: dict[str, Statement] = {}
     for each in statements:
-        same = joined.get(each.hash)
-        joined[each.hash] = each if same is None else _both(same, each)
-    return dict(sorted(joined.items()))
+        same = found.get(each.hash)
+        found[each.hash] = each if same is None else _both(same, each)
+    return dict(sorted(found.items()))
 
 
 def _both(one: Statement, other: Statement) -> Statement:

@@ -1,0 +1,199 @@
+"""A slip's references become sentences, each with its origin: the same references always say the same.
+
+Nothing but the slip, its statements, the edition's head and the rule book is read here.
+"""
+
+from collections.abc import Mapping, Sequence
+from datetime import date
+from typing import Any
+
+from rules.book import Book
+from rules.records import Ask
+from rules.slip import Card, Head, Line, Sentence, Slip, SlipView, Statement
+from service.editions import sentences as say
+from service.editions.cards import card
+from service.editions.told import origin, told, verdict
+
+USUAL = "Your usual crop checks still stand."
+HOW = "Worked out from looks that people reported, weather records and published rules."
+NOT_KNOWN = "It is not yet known how often asks like these are right."
+
+
+def view(slip: Slip, statements: Mapping[str, Statement], head: Head, book: Book) -> SlipView:
+    """One reader's digest in reading order."""
+    cards = tuple(card(line, statements, book) for line in slip.asks)
+    return SlipView(
+        subject=_subject(cards, book),
+        day=say.day(head.day),
+        answer=_answer(cards, slip, book),
+        before_looking=_before_looking(head, book) if cards else (),
+        cards=cards,
+        keep_in_mind=tuple(_mind(line, statements, book) for line in slip.mind),
+        silence=() if cards else tuple(_silence(slip, head)),
+        around=tuple(_around(slip, statements, head, book)),
+        note=(Sentence(head.note, "note"),) if head.note else (),
+        signed_by=head.signed_by,
+        before_acting=_before_acting(book),
+        foot=tuple(_foot(cards, head)),
+    )
+
+
+def sentences(shown: SlipView) -> list[Sentence]:
+    """Every sentence of a digest, in reading order: what the trail counts by."""
+    found = [shown.subject, shown.answer, *shown.before_looking]
+    for each in shown.cards:
+        found += [each.title, *each.what, each.when, each.how, *each.number]
+        found += [each.caution] if each.caution else []
+        found += [sentence for detail in each.details for sentence in detail.sentences]
+    found += [*shown.keep_in_mind, *shown.silence, *shown.around, *shown.note, shown.before_acting, *shown.foot]
+    return found
+
+
+# --- the answer first ------------------------------------------------------------------------------
+
+
+def _subject(cards: Sequence[Card], book: Book) -> Sentence:
+    if not cards:
+        return Sentence("This week: no special look asked; your usual crop checks still stand", "fixed:no_ask")
+    asks = [f"{_verb(each)} {book.pests[each.pest].plural}" for each in cards]
+    return Sentence(f"This week: {say.listed(asks)}, about {_minutes(cards)} minutes", "reader:asks")
+
+
+def _verb(each: Card) -> str:
+    return "count" if each.ask == Ask.COUNT else "look for"
+
+
+def _minutes(cards: Sequence[Card]) -> int:
+    return sum(each.minutes for each in cards)
+
+
+def _answer(cards: Sequence[Card], slip: Slip, book: Book) -> Sentence:
+    if cards:
+        pests = ", then ".join(book.pests[each.pest].plural for each in cards)
+        return Sentence(f"{_tasks(cards)}, about {_minutes(cards)} minutes: {pests}.", "reader:asks")
+    if slip.own["looks"] or slip.own.get("hidden"):
+        return Sentence(f"No special look this week. {USUAL}", "fixed:no_ask")
+    return Sentence(f"Nobody looked within 20 km, so we can't point you to one pest this week. {USUAL}", "reader:looks")
+
+
+def _tasks(cards: Sequence[Card]) -> str:
+    """Such as *Two looks* or *One count and one look*."""
+    counts = sum(each.ask == Ask.COUNT for each in cards)
+    said = [(counts, "count"), (len(cards) - counts, "look")]
+    return say.capital(say.listed([f"{say.in_words(n)} {word}{'s' if n > 1 else ''}" for n, word in said if n]))
+
+
+def _before_looking(head: Head, book: Book) -> tuple[Sentence, ...]:
+    """General cautions, once, above the first ask."""
+    wanted = {"always", "warm"} if head.warm_half else {"always"}
+    return tuple(Sentence(each.text, f"caution:{each.id}") for each in book.cautions if wanted & {*each.when})
+
+
+def _before_acting(book: Book) -> Sentence:
+    acting = next(each for each in book.cautions if "acting" in each.when)
+    return Sentence(acting.text, f"caution:{acting.id}")
+
+
+# --- what is only known ----------------------------------------------------------------------------
+
+
+def _mind(line: Line, statements: Mapping[str, Statement], book: Book) -> Sentence:
+    """One line, no card."""
+    if not line.statements:
+        pest = book.pests[line.own["pest"]].plural
+        text = f"{say.capital(pest)}: you looked without a find; look again from {say.day(line.own['until'])}."
+        return Sentence(text, "reader:own_look")
+    statement = statements[line.statements[0]]
+    pest = book.pests[statement.pest]
+    if statement.wording == "count":
+        counted = told(statement, "own", line.own["paddock"]).text
+        text = f"{say.capital(pest.plural)}: {counted} {verdict(statement, pest.relook_days.value).text}"
+    else:
+        text = told(statement, line.own["near"][0]).text
+        text = f"{say.capital(pest.plural)}: {text[:1].lower()}{text[1:]}"
+    return Sentence(text, origin(statement))
+
+
+def _silence(slip: Slip, head: Head) -> list[Sentence]:
+    """Where nothing is asked: how much looking stands behind that. Never an all-clear."""
+    looks, finds = slip.own["looks"], slip.own["finds"]
+    if slip.own.get("hidden"):
+        return [_hidden(head)]
+    if not looks:
+        text = "Nobody looked within 20 km in the last 14 days, so this says nothing about pests there."
+        return [Sentence(text, "reader:looks")]
+    made = f"in the last 14 days, {say.how_many(looks, 'look')} {'was' if looks == 1 else 'were'} made within 20 km"
+    if not finds:
+        text = f"Nothing was reported near you: {made}. That can't tell what nobody looked for."
+    else:
+        text = f"{say.capital(made)}. What they found asks for no special look, as far as we know your crops' stages."
+    return [Sentence(text, "reader:looks")]
+
+
+def _hidden(head: Head) -> Sentence:
+    text = (
+        f"Fewer than {head.holdings_to_hide} farms here can hide each other, "
+        "so what others found can't be shown without giving one away."
+    )
+    return Sentence(text, "fixed:hidden")
+
+
+def _around(slip: Slip, statements: Mapping[str, Statement], head: Head, book: Book) -> list[Sentence]:
+    """What others found, with the effort behind it."""
+    found = []
+    for line in slip.around:
+        first, *against = [statements[name] for name in line.statements]
+        found.append(Sentence(_counts(first, line.own["found"], book), f"statement:{first.hash}"))
+        found += [Sentence(_EFFORT[each.wording](each.figures), f"statement:{each.hash}") for each in against]
+    unlooked = [book.pests[id].plural for id in slip.own.get("unlooked", ())]
+    if unlooked:
+        text = f"Nobody in the district looked for {say.listed(unlooked, 'or')} in the last 14 days."
+        found.append(Sentence(text, "reader:unlooked"))
+    if slip.own.get("hidden") and slip.asks:
+        found.append(_hidden(head))
+    return found
+
+
+def _counts(statement: Statement, near: Sequence[int], book: Book) -> str:
+    many, days = say.capital(book.pests[statement.pest].plural), statement.figures["days"]
+    finds, looks = statement.figures["finds"], statement.figures["looks"]
+    district = f"{say.of_looks(finds, looks)} in the district in the last {days} days"
+    if not near[1]:
+        return f"{many}: nobody looked within 20 km; {district}."
+    here = f"{many}: {say.of_looks(*near)} within 20 km in the last {days} days"
+    return f"{here}." if near[1] == looks else f"{here}; {finds:,} of {looks:,} in the whole district."
+
+
+def _one_reporter(figures: Mapping[str, Any]) -> str:
+    return f"Most of these reports ({figures['by_one']} of {figures['finds']} in the district) came from one person."
+
+
+def _more_looking(figures: Mapping[str, Any]) -> str:
+    usual = say.number(figures["usual_looks"])
+    return (
+        f"More people looked than usual ({say.how_many(figures['looks'], 'look')} in a week; usually {usual}), "
+        "and the pest turned up no more often than usual."
+    )
+
+
+_EFFORT = {"one_reporter": _one_reporter, "more_looking": _more_looking}
+
+
+# --- the foot --------------------------------------------------------------------------------------
+
+
+def _foot(cards: Sequence[Card], head: Head) -> list[Sentence]:
+    where = (
+        f"Distances run to the middle of an area with at least {head.holdings_to_hide} farms, "
+        "so that nobody's paddock is given away."
+    )
+    found = [Sentence(USUAL, "fixed:usual"), Sentence(HOW, "fixed:how"), Sentence(where, "fixed:where")]
+    if cards:
+        found.append(Sentence(NOT_KNOWN, "fixed:not_known"))
+    return found + [Sentence(f"Weather: {each}.", f"weather:{each}") for each in head.attributions]
+
+
+def warm_half(day: date, latitude: float) -> bool:
+    """Whether a day lies in the warm half of the year: October to March in the south."""
+    southern_summer = day.month in (10, 11, 12, 1, 2, 3)
+    return southern_summer if latitude < 0 else not southern_summer
