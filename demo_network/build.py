@@ -5,12 +5,11 @@ history/season1,2/  two past seasons: paddocks as sown, observations, weather
 season3/2026-Wnn/   what came in since the week before, up to the week's cut-off
 """
 
-import shutil
 from collections import defaultdict
 from collections.abc import Iterable
 from pathlib import Path
 
-from demo_network import directory, farming, observations, paddocks, traps, weather
+from demo_network import directory, farming, observations, paddocks, room, traps, weather
 from demo_network.event import Event
 from demo_network.farming import World
 from demo_network.files import Row, write
@@ -18,10 +17,9 @@ from demo_network.network import DISTRICTS
 from demo_network.planted import EVENTS, NAMES
 from demo_network.seasons import HISTORY, LIVE, SEASONS, arrival_week
 from demo_network.streams import row_id
-from service.errors import Refused
 
 SEED = 20260215
-PARTS, MARK = ("network", "history", "season3"), "INVENTED.txt"
+PARTS = ("network", "history", "season3")
 ARRIVAL_UNKNOWN = 0.3  # share of the oldest season's rows that came without a note of when they arrived
 
 
@@ -36,24 +34,13 @@ def build(folder: Path, *, seed: int = SEED, without: frozenset[str] = frozenset
         raise ValueError(
             f"no planted event is called {', '.join(sorted(unknown))}; there are {', '.join(sorted(NAMES))}"
         )
-    _make_room(folder)
+    room.make(folder, PARTS)
     world = farming.invent(seed)
     events = tuple(event for event in EVENTS if event.name not in without)
     _network(folder / "network", world)
     _paddocks(folder, world)
     _dated(folder, world, "observations", _observations(world, events))
     _dated(folder, world, "station_days", _station_days(world, events))
-
-
-def _make_room(folder: Path) -> None:
-    """An empty folder, or one that an earlier build filled; nobody else's files are removed."""
-    mark = folder / MARK
-    if folder.exists() and any(folder.iterdir()) and not mark.exists():
-        raise Refused(f"{folder} holds files that the demo did not write; name an empty folder")
-    for part in PARTS:
-        shutil.rmtree(folder / part, ignore_errors=True)
-    folder.mkdir(parents=True, exist_ok=True)
-    mark.write_text("Everything in this folder is invented; building again replaces it.\n", encoding="utf-8")
 
 
 def _network(folder: Path, world: World) -> None:

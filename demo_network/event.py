@@ -30,3 +30,8 @@ class Event:
     @property
     def artefact(self) -> bool:
         return self.kind == ARTEFACT
+
+    @property
+    def telling(self) -> str:
+        """What a mail must state: the kind of rule, or the artefact by its own name."""
+        return self.name if self.artefact else self.kind
