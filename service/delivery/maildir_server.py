@@ -5,9 +5,10 @@ leaves the machine.
 """
 
 import asyncio
+import contextlib
 import mailbox
+import socket
 from collections.abc import Callable
-from concurrent.futures import Future
 from pathlib import Path
 from threading import Thread
 from typing import Any
@@ -35,36 +36,46 @@ class LocalServer:
         self._make = protocol or (lambda handler: SMTP(handler, hostname="localhost", enable_SMTPUTF8=True))
         self._handler = handler
         self._connections: set[SMTP] = set()
+        self._stopping = False
 
     def __enter__(self) -> "LocalServer":
-        ready: Future[int] = Future()
-        self._thread = Thread(target=lambda: asyncio.run(self._serve(ready)), name="smtp", daemon=True)
+        try:
+            self._listener = socket.create_server((self.host, self.port), backlog=100)
+        except OSError as error:
+            raise MailDown(f"no mail server can listen on port {self.port}: {error.strerror}") from error
+        self._listener.setblocking(False)
+        self.port = self._listener.getsockname()[1]
+        self._thread = Thread(target=lambda: asyncio.run(self._serve()), name="smtp", daemon=True)
         self._thread.start()
-        self.port = ready.result()
         return self
 
     def __exit__(self, *_: object) -> None:
-        self._loop.call_soon_threadsafe(self._stop.set)
+        self.stop()
         self._thread.join()
+
+    def stop(self) -> None:
+        """Close the door and hang up on everyone, soon; from any thread, and more than once if need be."""
+        self._stopping = True
+        with contextlib.suppress(OSError):  # closed already
+            socket.create_connection((self.host, self.port), timeout=1.0).close()  # so that it looks up
 
     @property
     def open_connections(self) -> int:
         return sum(connection.transport is not None for connection in tuple(self._connections))
 
-    async def _serve(self, ready: "Future[int]") -> None:
-        self._loop, self._stop = asyncio.get_running_loop(), asyncio.Event()
-        try:
-            server = await self._loop.create_server(self._connection, self.host, self.port)
-        except OSError as error:
-            ready.set_exception(MailDown(f"no mail server can listen on port {self.port}: {error.strerror}"))
-            return
-        ready.set_result(server.sockets[0].getsockname()[1])
-        await self._stop.wait()
-        server.close()
+    async def _serve(self) -> None:
+        loop = asyncio.get_running_loop()
+        with self._listener:
+            while True:
+                client, _ = await loop.sock_accept(self._listener)
+                if self._stopping:
+                    break
+                await loop.connect_accepted_socket(self._connection, client)
+        client.close()
         for connection in self._connections:
             if isinstance(connection.transport, asyncio.Transport):
                 connection.transport.abort()
-        await server.wait_closed()
+        await asyncio.sleep(0)  # so that each hears of it
 
     def _connection(self) -> SMTP:
         self._connections = {known for known in self._connections if known.transport is not None}

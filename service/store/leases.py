@@ -15,24 +15,20 @@ from sqlalchemy import (
     ColumnElement,
     Connection,
     Select,
-    String,
     bindparam,
-    column,
     exists,
     func,
     select,
-    table,
     update,
 )
 from sqlalchemy.dialects import postgresql, sqlite
 
 from service.store.base import UtcTime
+from service.store.editions import edition
 from service.store.outbox import ANSWER_LENGTH, HELD, NO_LEASE, WAITING, change, delivery, outbox, state_in
 
 T = TypeVar("T")
 Work = Callable[[Connection], T]  # what a worker does in one transaction
-
-_edition = table("edition", column("id", String), column("state", String))
 
 
 @dataclass(frozen=True, slots=True)
@@ -78,9 +74,9 @@ class _Held:
 def claim(c: Connection, worker: str, now: datetime, n: int, lease_s: float) -> list[Job]:
     """Lease up to `n` rows that may go out now: notices first, then the rows of sent editions."""
     ids: list[int] = []
-    for edition in (None, *_editions_with_mail(c, now)):
+    for source in (None, *_editions_with_mail(c, now)):
         if len(ids) < n:
-            ids += c.scalars(_due_rows(edition, now, n - len(ids)))
+            ids += c.scalars(_due_rows(source, now, n - len(ids)))
     if not ids:
         return []
     values: dict[str, Any] = {"state": "leased", "fence": outbox.c.fence + 1, "leased_by": worker}
@@ -212,11 +208,11 @@ def _ready(now: datetime) -> tuple[ColumnElement[bool], ...]:
 
 def _editions_with_mail(c: Connection, now: datetime) -> list[str]:
     """Sent editions with rows to send. Rows of an unsigned edition are never even looked at."""
-    waiting = exists().where(outbox.c.edition == _edition.c.id, *_ready(now))
-    return list(c.scalars(select(_edition.c.id).where(_edition.c.state == "sent", waiting).order_by(_edition.c.id)))
+    waiting = exists().where(outbox.c.edition == edition.c.id, *_ready(now))
+    return list(c.scalars(select(edition.c.id).where(edition.c.state == "sent", waiting).order_by(edition.c.id)))
 
 
-def _due_rows(edition: str | None, now: datetime, n: int) -> Select[tuple[int]]:
-    of_edition = outbox.c.edition.is_(None) if edition is None else outbox.c.edition == edition
-    rows = select(outbox.c.id).where(of_edition, *_ready(now)).order_by(outbox.c.due, outbox.c.id)
+def _due_rows(source: str | None, now: datetime, n: int) -> Select[tuple[int]]:
+    in_source = outbox.c.edition.is_(None) if source is None else outbox.c.edition == source
+    rows = select(outbox.c.id).where(in_source, *_ready(now)).order_by(outbox.c.due, outbox.c.id)
     return rows.limit(n).with_for_update(skip_locked=True)

@@ -35,6 +35,7 @@ from sqlalchemy import (
 )
 from sqlalchemy.dialects import postgresql, sqlite
 
+from service.store import editions as _editions  # noqa: F401 - its table is referred to
 from service.store.base import UtcTime, metadata
 
 STATES = ("queued", "leased", "sending", "sent", "deferred", "failed", "expired", "withdrawn")
@@ -59,7 +60,7 @@ outbox = Table(
     Column("kind", String, nullable=False),  # edition, correction, extra, notice
     Column("key", String, nullable=False),
     Column("district", ForeignKey("district.id"), nullable=False),
-    Column("edition", String),  # none for a notice, which nobody signs
+    Column("edition", ForeignKey("edition.id")),  # none for a notice, which nobody signs
     Column("subscriber", String, nullable=False),
     Column("domain", String, nullable=False),
     Column("state", String, nullable=False),
@@ -141,8 +142,8 @@ def enqueue(c: Connection, rows: Sequence[Outgoing], now: datetime) -> int:
     new = 0
     for start in range(0, len(rows), PIECE):
         values = [asdict(row) | fresh for row in rows[start : start + PIECE]]
-        statement = dialect.insert(outbox).values(values)
-        new += c.execute(statement.on_conflict_do_nothing(index_elements=["kind", "key"])).rowcount
+        fresh_rows = dialect.insert(outbox).values(values).on_conflict_do_nothing(index_elements=["kind", "key"])
+        new += len(c.scalars(fresh_rows.returning(outbox.c.id)).all())
     return new
 
 
