@@ -38,6 +38,11 @@ def tidy(text: str) -> str:
     return line.replace("{{link:", "{{\u2060link:")  # a placeholder that a person typed is not a link
 
 
+def paragraphs(text: str) -> list[str]:
+    """What a person typed with empty lines between, as one line each."""
+    return [line for line in map(tidy, re.split(r"\n\s*\n", text)) if line]
+
+
 class Renderer:
     """Renders slips, and keeps up to `keep` shared parts of each kind for the next one."""
 
@@ -79,8 +84,13 @@ def _renderer() -> Renderer:
 @cache
 def templates_hash() -> str:
     """The short hash of every template that the canonical form is made with, and of its name."""
+    return hash_of(shipped("templates", "email"))
+
+
+def hash_of(folder: Traversable) -> str:
+    """The short hash of the names and bytes of all files in a folder."""
     seen = hashlib.sha256()
-    for name, content in sorted(_files(shipped("templates", "email"), "")):
+    for name, content in sorted(_files(folder, "")):
         seen.update(f"{name}\n{len(content)}\n".encode() + content)
     return seen.hexdigest()[:32]
 
@@ -107,7 +117,7 @@ def _shape(body: str, parts: str | None, keep: int, inline: Mapping[str, str]) -
         auto_reload=False,
         trim_blocks=False,
     )
-    environment.filters["tidy"] = tidy
+    environment.filters |= {"tidy": tidy, "paragraphs": paragraphs}
     environment.globals |= {"show_link": SHOW_LINK, "unsubscribe_link": UNSUBSCRIBE_LINK}
     macros = environment.get_template(parts).module if parts else None
     made = {name: getattr(macros, name) for name in _PARTS if macros}
