@@ -46,6 +46,13 @@ def cell_of(latitude: float, longitude: float) -> int:
     return int(h3.latlng_to_cell(latitude, longitude, GRID))
 
 
+def cells_of(latitudes: npt.NDArray[np.float64], longitudes: npt.NDArray[np.float64]) -> npt.NDArray[np.int64]:
+    """The rule-grid cells that hold many points."""
+    of = h3.latlng_to_cell
+    found = [of(lat, lon, GRID) for lat, lon in zip(latitudes.tolist(), longitudes.tolist(), strict=True)]
+    return np.array(found, np.int64)
+
+
 def centre(cell: int) -> tuple[float, float]:
     """Latitude and longitude of a cell's centre."""
     lat, lon = h3.cell_to_latlng(cell)

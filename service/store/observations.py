@@ -108,7 +108,8 @@ def read(
         query = query.where(observation.c.day >= first_day)
     if last_day is not None:
         query = query.where(observation.c.day <= last_day)
-    return [_record_of(row) for row in c.execute(query.order_by(observation.c.key))]
+    found = [_record_of(row) for row in c.execute(query)]
+    return sorted(found, key=lambda record: record.key)  # not in SQL: the stores sort texts differently
 
 
 def get(c: Connection, key: str, version: int) -> Observation | None:

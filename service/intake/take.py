@@ -1,0 +1,219 @@
+"""Take a file of observations: all of it or nothing, once however often it is taken.
+
+1. Rows that name a notifiable pest go to the closed table, and to nothing that follows.
+2. The others are checked; a row that can't be taken stops the file, unless the good ones are wanted alone.
+3. They are compared with what the store knows by their keys, and the new ones are added.
+"""
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pyarrow as pa
+import pyarrow.compute as pc
+from sqlalchemy import Connection
+
+from rules.records import Refusal
+from service import rulebook
+from service.clock import Clock
+from service.errors import BadInput
+from service.intake import cells, csv_file, refusals, reportable, sheet
+from service.intake.consistency import Mask
+from service.intake.frame import Frame, Names, frame_of
+from service.intake.incoming import Builder
+from service.intake.refusals import RowsRefused
+from service.intake.sheet import Sheet
+from service.store import observation_load, reportables
+from service.store.base import Store
+from service.store.reportables import Case
+
+Progress = Callable[[int, int | None, str], None]  # how many are done, of how many, what is done
+
+
+def take_observations(
+    store: Store,
+    path: Path,
+    *,
+    clock: Clock,
+    source: str = "csv",
+    district: str | None = None,
+    history: bool = False,
+    keep_good: Path | None = None,
+    revise: bool = False,
+    progress: Progress | None = None,
+) -> dict[str, Any]:
+    """Take a file of observations into the store.
+
+    Parameters
+    ----------
+    source
+        Whose record ids these are, for rows that don't say.
+    district
+        The district of rows that don't tell it by paddock, postcode or column.
+    history
+        Rows of past seasons: knowable from their stated arrival, or from an assumed one, flagged.
+    keep_good
+        Take the good rows, and write the others to this file, to mend and take again.
+    revise
+        Rows that changed under a known key become its next version, in place of being refused.
+
+    Returns
+    -------
+    dict
+        The numbers of rows `new`, `revised`, `same` (known already) and `refused`; `to_the_hotline` is what
+        the reporter must read first, or None.
+
+    Raises
+    ------
+    RowsRefused
+        Nothing was taken; names every row that can't be, with its remedy.
+    """
+    frame = frame_of(store, Names.of(rulebook.load()), clock.now(), district)
+    builder = Builder(frame, checked_source(source, frame), history)
+    if keep_good is not None:
+        refusals.check_target(keep_good, path)
+    taking = _open(store, path, frame)
+    table, twice = _once(_checked(taking, builder, progress), taking)
+    taking.stop_if_refused(keep_good)
+    with store.writing() as c:
+        counts = _add(c, taking, table, builder, revise)
+        taking.stop_if_refused(keep_good)
+        if keep_good is not None:
+            taking.keep(keep_good)
+    counts["same"] += twice
+    return counts | {"refused": len(taking.refused_rows()), "to_the_hotline": taking.first}
+
+
+def checked_source(source: str, frame: Frame) -> str:
+    """A source that can be part of a key."""
+    try:
+        return str(cells.read("source", source, frame) or "csv")
+    except ValueError as error:
+        raise BadInput(f"source {source!r}: {error}") from error
+
+
+@dataclass(slots=True)
+class _Taking:
+    """One file on its way in: what is wanted of it, what was refused, and what must be said first."""
+
+    name: str  # as it may be shown
+    whole: Sheet
+    frame: Frame
+    wanted: Mask
+    refused: list[Refusal]
+    first: str | None
+
+    def refused_rows(self) -> set[int]:
+        return {refusal.row for refusal in self.refused}
+
+    def stop_if_refused(self, keep_good: Path | None) -> None:
+        """All or nothing, unless the good rows are wanted alone."""
+        self.refused.sort(key=lambda refusal: refusal.row)
+        if self.refused and keep_good is None:
+            raise RowsRefused(refusals.summary(self.name, self.refused), self.refused, self.first)
+
+    def keep(self, path: Path) -> None:
+        """Write the refused rows, if there are any, to be mended and taken again."""
+        numbers = self.refused_rows()
+        rows = {misfit.number: misfit.cells for misfit in self.whole.misfits if misfit.number in numbers}
+        fitting = sorted(numbers - set(rows))
+        found = self.whole.columns.take(pa.array(np.searchsorted(self.whole.numbers, fitting)))
+        rows |= {at: list(row.values()) for at, row in zip(fitting, found.to_pylist(), strict=True)}
+        if rows:
+            refusals.keep(path, self.whole.header, rows, self.refused)
+
+
+# --- 1. notifiable pests -----------------------------------------------------------------------
+
+
+def _open(store: Store, path: Path, frame: Frame) -> _Taking:
+    """Read a file and put aside what must go no further."""
+    try:
+        whole = sheet.read(path)
+    except BadInput as error:
+        raise _unreadable(store, path, frame, error) from None
+    matching, odd, cases = reportable.cases_in(whole, path, frame)
+    first = _put_aside(store, cases, frame)
+    name = reportable.showable(path.name, "the file", frame)
+    return _Taking(name, whole, frame, ~matching, csv_file.misfits(whole, odd), first)
+
+
+def _unreadable(store: Store, path: Path, frame: Frame, error: BadInput) -> BadInput:
+    """The refusal of a file that is no table; it names nothing that stands on a list."""
+    text = path.read_bytes().decode("latin-1") if path.is_file() else ""
+    first = _put_aside(store, reportable.cases_in_text(text, path, frame), frame)
+    words = reportable.showable(str(error), "the file is no table of observations; check its header and rows", frame)
+    told = [each for each in error.refusals if reportable.showable(each.value, "", frame) == each.value]
+    return RowsRefused(words, told, first)
+
+
+def _put_aside(store: Store, cases: list[Case], frame: Frame) -> str | None:
+    """Keep cases before anything can fail; what the reporter must read first."""
+    if cases:
+        with store.writing() as c:
+            reportables.save_cases(c, cases)
+    return reportable.tell_first(cases, frame)
+
+
+# --- 2. rows that can be taken -----------------------------------------------------------------
+
+
+def _checked(taking: _Taking, builder: Builder, progress: Progress | None) -> pa.Table:
+    """The good rows as the store keeps them, sorted by key; the others join the refused."""
+    tables = []
+    for block in csv_file.sift(taking.whole, taking.wanted, taking.frame):
+        taking.refused += block.refused
+        if len(block.numbers):
+            tables.append(builder.build(block.values, block.numbers))
+        if progress is not None:
+            progress(block.last, int(taking.whole.numbers[-1]), "rows checked")
+    if not tables:
+        return pa.table({"key": pa.array([], pa.string())})
+    table = pa.concat_tables(tables, promote_options="default").combine_chunks()
+    return table.take(pc.sort_indices(table["key"])).combine_chunks()
+
+
+def _once(table: pa.Table, taking: _Taking) -> tuple[pa.Table, int]:
+    """Each key once: a row that says the same again is left out, one that says something else is refused."""
+    keys = table["key"].combine_chunks()
+    again = np.zeros(len(keys), bool)
+    again[1:] = pc.equal(keys[1:], keys[:-1]).to_numpy(zero_copy_only=False)
+    if not again.any():
+        return table, 0
+    leader = np.maximum.accumulate(np.where(again, 0, np.arange(len(keys))))
+    other = ~pc.equal(table["digest"], table["digest"].take(pa.array(leader))).to_numpy()
+    for at in np.flatnonzero(other).tolist():
+        row, first = table["row"][at].as_py(), table["row"][int(leader[at])].as_py()
+        remedy = f"row {first} has the same record id and says something else; keep one of them, or give it its own id"
+        taking.refused.append(Refusal(row, "record_id", _record_id(keys[at].as_py()), remedy))
+    return table.filter(pa.array(~again)), int((again & ~other).sum())
+
+
+def _record_id(key: str) -> str:
+    return key.partition(":")[2]
+
+
+# --- 3. what is new ----------------------------------------------------------------------------
+
+
+def _add(c: Connection, taking: _Taking, table: pa.Table, builder: Builder, revise: bool) -> dict[str, int]:
+    """Add what is new, and next versions of what has changed if they are wanted; else that is refused."""
+    if not table.num_rows:
+        return {"new": 0, "revised": 0, "same": 0}
+    held = observation_load.known(c, table["key"].combine_chunks(), table["digest"].combine_chunks())
+    new, changed = held.newest == 0, (held.newest > 0) & ~held.same
+    if not revise:
+        for at in np.flatnonzero(changed).tolist():
+            row, id = table["row"][at].as_py(), _record_id(table["key"][at].as_py())
+            taking.refused.append(Refusal(row, "record_id", id, _CHANGED))
+    wanted = new | changed if revise else new
+    table = table.drop_columns("row").append_column("version", pa.array(held.newest + 1))
+    if not wanted.all():
+        table = table.filter(pa.array(wanted))
+    observation_load.load(c, table, builder.constants(table.column_names))
+    return {"new": int(new.sum()), "revised": int(changed.sum()) if revise else 0, "same": int(held.same.sum())}
+
+
+_CHANGED = "is known and said something else; mend it, or take it with --revise to make this its next version"
