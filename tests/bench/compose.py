@@ -15,7 +15,7 @@ from functools import lru_cache
 from typing import Any, NamedTuple
 
 from rules.records import Ask
-from rules.slip import Card, Detail, Sentence, SlipView
+from rules.slip import Card, Detail, Rendered, Sentence, SlipView
 from service.delivery import mime
 from service.editions.many import Composers
 from service.editions.render import Renderer, render
@@ -94,8 +94,13 @@ def view_of(week: int, reader: Reader) -> SlipView:
 
 def composed(week: int, reader: Reader) -> bytes:
     """One message, as delivery makes it."""
+    return mailed(render(view_of(week, reader)), week, reader)
+
+
+def mailed(rendered: Rendered, week: int, reader: Reader) -> bytes:
+    """A rendered digest as the bytes of a message."""
     return mime.build(
-        rendered=render(view_of(week, reader)),
+        rendered=rendered,
         sender="digest@leafturn.example",
         sender_name="North Bank digest",
         recipient=f"reader{reader.number}@example.org",
@@ -108,6 +113,7 @@ def composed(week: int, reader: Reader) -> bytes:
 
 
 def _weekly(_shared: None, item: tuple[int, Reader]) -> bytes:
+    """What a worker process makes of one reader; the week travels along, since the processes outlive it."""
     return composed(*item)
 
 

@@ -1,0 +1,168 @@
+"""The compiled loops behind `rules.hatch`; each block returns 1 if it met a value that can't be weather.
+
+A cell's state is one integer that carries its phase, so that a day is a few selections without a
+branch. `UNARMED + d`: waiting for rain, whose window is whole from day d on. `d >= 0`: waiting for
+cool, met on day d unless a day in between is not cool. `-1 - d`: met on day d.
+"""
+
+from typing import Any
+
+import numba
+import numpy as np
+
+from rules.compiled import BLOCK, STEP, fetch, kernel
+
+UNARMED = np.int32(2**30)
+NEVER = np.int32(-(2**31))
+HUGE = 1e30  # beyond any weather: infinities
+
+
+@kernel()
+def _met_on(state: Any, out: Any) -> None:
+    for c in range(state.size):
+        out[c] = -1 - state[c] if state[c] < 0 else -1
+
+
+@kernel()
+def _rain_then_cool_step(
+    t: int, start: int, x: Any, y: Any, old: Any, state: Any, total: Any,
+    rain_limit: float, rain_days: int, cool_below: Any, cool_days: int,
+) -> int:  # fmt: skip
+    """One day of `STEP` cells; `old` is the rain that leaves the window."""
+    zero, huge, bad = y.dtype.type(0), x.dtype.type(HUGE), 0
+    today, met, again = np.int32(t), np.int32(-1 - t), np.int32(t + cool_days)
+    blocked = np.int32(UNARMED + t + rain_days)
+    whole = np.int32(UNARMED + t) if t >= start else NEVER
+    for c in range(state.size):
+        was = state[c]
+        total[c] += np.float64(y[c] if y[c] > zero else zero) - np.float64(old[c] if old[c] > zero else zero)
+        unarmed = blocked if np.isnan(y[c]) else was
+        unarmed = again if (unarmed <= whole) & (total[c] > rain_limit) else unarmed
+        armed = was if x[c] < cool_below else again
+        armed = met if armed <= today else armed
+        state[c] = unarmed if was >= UNARMED else (was if was < 0 else armed)
+        bad |= (y[c] < zero) | (y[c] > huge) | (abs(x[c]) > huge)
+    return bad
+
+
+@kernel()
+def rain_then_cool_block(
+    tmean: Any, rain: Any, low: int, high: int, start: int,
+    rain_limit: float, rain_days: int, cool_below: Any, cool_days: int, out: Any,
+) -> int:  # fmt: skip
+    """Days on which a cool run after rain is complete, for the cells low:high."""
+    days, cells, bad = tmean.shape[0], high - low, 0
+    state = np.full(cells, UNARMED + rain_days - 1, np.int32)
+    total = np.zeros(cells)
+    dry = np.zeros(STEP, rain.dtype)
+    for t in range(days):
+        for f in range(low, high, STEP):
+            g = min(f + STEP, high)
+            fetch(tmean, min(t + 1, days - 1), f, g)
+            fetch(rain, min(t + 1, days - 1), f, g)
+            old = rain[t - rain_days, f:g] if t >= rain_days else dry[: g - f]
+            bad |= _rain_then_cool_step(
+                t, start, tmean[t, f:g], rain[t, f:g], old, state[f - low : g - low], total[f - low : g - low],
+                rain_limit, rain_days, cool_below, cool_days,
+            )  # fmt: skip
+    _met_on(state, out[low:high])
+    return bad
+
+
+@kernel(parallel=True)
+def rain_then_cool_blocks(
+    tmean: Any, rain: Any, start: int, rain_limit: float, rain_days: int, cool_below: Any, cool_days: int, out: Any
+) -> int:
+    bad = np.zeros(-(-out.size // BLOCK), np.int64)
+    for b in numba.prange(bad.size):
+        low, high = b * BLOCK, min((b + 1) * BLOCK, out.size)
+        bad[b] = rain_then_cool_block(
+            tmean, rain, low, high, start, rain_limit, rain_days, cool_below, cool_days, out
+        )  # fmt: skip
+    return int(bad.max())
+
+
+@kernel()
+def _first_day_step(
+    t: int, x: Any, y: Any, state: Any, wet: Any,
+    cool_at_most: Any, cool_days: int, rain_at_least: Any, rain_within: int,
+) -> int:  # fmt: skip
+    """One day of `STEP` cells; `wet` is the last day on which the newest rain still counts."""
+    zero, huge, bad = y.dtype.type(0), x.dtype.type(HUGE), 0
+    today, met, counts_to = np.int32(t), np.int32(-1 - t), np.int32(t + rain_within - 1)
+    warm, missing = np.int32(t + cool_days), np.int32(t + rain_within)
+    for c in range(state.size):
+        was = state[c]
+        until = was if x[c] <= cool_at_most else max(was, warm)
+        until = max(until, missing) if np.isnan(y[c]) else until
+        wet[c] = counts_to if y[c] >= rain_at_least else wet[c]
+        until = met if (until <= today) & (wet[c] >= today) else until
+        state[c] = was if was < 0 else until
+        bad |= (y[c] < zero) | (y[c] > huge) | (abs(x[c]) > huge)
+    return bad
+
+
+@kernel()
+def first_day_block(
+    tmean: Any, rain: Any, low: int, high: int, start: int,
+    cool_at_most: Any, cool_days: int, rain_at_least: Any, rain_within: int, out: Any,
+) -> int:  # fmt: skip
+    """First days on which both looking-back windows are met, for the cells low:high."""
+    days, cells, bad = tmean.shape[0], high - low, 0
+    state = np.full(cells, max(start, cool_days - 1, rain_within - 1), np.int32)
+    wet = np.full(cells, -1, np.int32)
+    for t in range(days):
+        for f in range(low, high, STEP):
+            g = min(f + STEP, high)
+            fetch(tmean, min(t + 1, days - 1), f, g)
+            fetch(rain, min(t + 1, days - 1), f, g)
+            bad |= _first_day_step(
+                t, tmean[t, f:g], rain[t, f:g], state[f - low : g - low], wet[f - low : g - low],
+                cool_at_most, cool_days, rain_at_least, rain_within,
+            )  # fmt: skip
+    _met_on(state, out[low:high])
+    return bad
+
+
+@kernel(parallel=True)
+def first_day_blocks(
+    tmean: Any, rain: Any, start: int, cool_at_most: Any, cool_days: int, rain_at_least: Any, rain_within: int, out: Any
+) -> int:
+    bad = np.zeros(-(-out.size // BLOCK), np.int64)
+    for b in numba.prange(bad.size):
+        low, high = b * BLOCK, min((b + 1) * BLOCK, out.size)
+        bad[b] = first_day_block(
+            tmean, rain, low, high, start, cool_at_most, cool_days, rain_at_least, rain_within, out
+        )
+    return int(bad.max())
+
+
+@kernel()
+def rain_then_cool_cell(
+    x: Any, y: Any, start: int, rain_limit: float, rain_days: int, cool_below: Any, cool_limit: float,
+    cool_days: int, consecutive: bool, rain_again: bool,
+) -> tuple[int, int]:  # fmt: skip
+    """One cell in any of the rule's modes: (day met, rain day), -1 where there is none."""
+    rain_day, run, wet_sum, cool_sum, wet_from, cool_from = -1, 0, 0.0, 0.0, rain_days - 1, cool_days - 1
+    for t in range(x.size):
+        wet_sum += np.float64(0 if np.isnan(y[t]) else y[t])
+        cool_sum += np.float64(0 if np.isnan(x[t]) else x[t])
+        if t >= rain_days and not np.isnan(y[t - rain_days]):
+            wet_sum -= np.float64(y[t - rain_days])
+        if t >= cool_days and not np.isnan(x[t - cool_days]):
+            cool_sum -= np.float64(x[t - cool_days])
+        wet_from = t + rain_days if np.isnan(y[t]) else wet_from
+        cool_from = t + cool_days if np.isnan(x[t]) else cool_from
+        if rain_day < 0:
+            if t >= start and t >= wet_from and wet_sum > rain_limit:
+                rain_day = t
+            continue
+        broken = run > 0 and not x[t] < cool_below
+        run = run + 1 if x[t] < cool_below else 0
+        if consecutive and run >= cool_days:
+            return t, rain_day
+        if not consecutive and t >= rain_day + cool_days and t >= cool_from and cool_sum < cool_limit:
+            return t, rain_day
+        if broken and rain_again:
+            rain_day = -1
+    return -1, rain_day
