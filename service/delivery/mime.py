@@ -20,8 +20,7 @@ from service.errors import Refused
 _LINE = 78  # longest line that RFC 5322 section 2.1.1 asks for, without CRLF
 _HARD_LINE = 998  # longest that it allows
 _WORD_BYTES = 45  # UTF-8 bytes in one encoded word: 60 of base64, of the 75 characters allowed (RFC 2047)
-_NEWLINE = re.compile(r"\r\n|\r|\n")
-_NEEDS_ENCODING = re.compile(rb"[^\t\r\n -~]|[ \t]\r\n|[^\r\n]{79}")
+_PRINTABLE = bytes([*b"\t\r\n", *range(0x20, 0x7F)])
 _ATOMS = re.compile(r"[A-Za-z0-9!#$%&'*+/=?^_`{|}~ -]+")
 _ONE_TOKEN = re.compile(r"[!-~]+")
 
@@ -106,15 +105,22 @@ def _linked(text: str, links: dict[str, str]) -> str:
 
 def _part(subtype: str, text: str) -> bytes:
     """A part with its own headers: as it is where it can travel so, else quoted-printable (RFC 2045)."""
-    data = _NEWLINE.sub("\r\n", text).encode()
+    data = text.replace("\r\n", "\n").replace("\r", "\n").replace("\n", "\r\n").encode()
     if not data.endswith(b"\r\n"):
         data += b"\r\n"
     charset, encoding = b"us-ascii", b"7bit"
-    if not data.isascii() or _NEEDS_ENCODING.search(data):
+    if not _travels_as_it_is(data):
         charset, encoding = b"utf-8", b"quoted-printable"
         data = binascii.b2a_qp(data, istext=True)
     kind = b"Content-Type: text/" + subtype.encode() + b"; charset=" + charset
     return kind + b"\r\nContent-Transfer-Encoding: " + encoding + b"\r\n\r\n" + data
+
+
+def _travels_as_it_is(data: bytes) -> bool:
+    """Printable ASCII, no line over 998, no space at the end of one (RFC 2045 sections 2.7 and 6.7)."""
+    if data.translate(None, _PRINTABLE) or b" \r\n" in data or b"\t\r\n" in data:
+        return False
+    return max(map(len, data.split(b"\r\n"))) <= _HARD_LINE
 
 
 def _boundary(parts: list[bytes], message_id: str) -> bytes:

