@@ -99,7 +99,7 @@ class Walk:
 
     def _send(self, drafted: Outcome) -> None:
         id, coordinator = drafted["edition"], COORDINATORS[drafted["district"]]
-        signed = pipeline.sign(self.store, id, by=coordinator, clock=self.clock)
+        signed = pipeline.sign(self.store, self.settings, id, by=coordinator, clock=self.clock)
         sent = pipeline.send(self.store, self.settings, id, clock=self.clock)
         drafted["delivered"] = sent["sent"]
         self.counts["slips"] += signed["slips"]

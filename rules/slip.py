@@ -92,6 +92,7 @@ class Edition:
     as_of: datetime
     drafted_at: datetime
     drafted_by: str
+    head: Head
     state: str = "draft"
     note: str = ""
     hold_reason: str | None = None

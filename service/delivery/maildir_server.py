@@ -11,7 +11,7 @@ import socket
 from collections.abc import Callable
 from pathlib import Path
 from threading import Thread
-from typing import Any
+from typing import Any, Self
 
 from aiosmtpd.smtp import SMTP, Envelope, Session
 
@@ -38,7 +38,7 @@ class LocalServer:
         self._connections: set[SMTP] = set()
         self._stopping = False
 
-    def __enter__(self) -> "LocalServer":
+    def __enter__(self) -> Self:
         try:
             self._listener = socket.create_server((self.host, self.port), backlog=100)
         except OSError as error:

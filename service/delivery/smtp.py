@@ -194,3 +194,16 @@ async def _reset(connection: aiosmtplib.SMTP) -> bool:
     except (*_CUT_OFF, aiosmtplib.SMTPException):
         return False
     return True
+
+
+def greet(mail: MailSettings, password: str) -> str:
+    """Open a conversation as a sending would, and close it; says how it went. MailDown where it fails."""
+
+    async def conversation() -> None:
+        sender = SmtpSender(mail, password=password)
+        await sender.open()
+        await sender.close()
+
+    asyncio.run(conversation())
+    how = "with STARTTLS" if mail.starttls == "required" else "without STARTTLS, as the settings say"
+    return f"{mail.host}:{mail.port} answers, {how}"

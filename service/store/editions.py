@@ -6,10 +6,9 @@ belong to one edition. An edition that is signed no longer changes, except that 
 
 import json
 from collections.abc import Iterable, Iterator, Mapping, Sequence
-from dataclasses import asdict
-from datetime import datetime
+from datetime import date, datetime
 from itertools import islice
-from typing import Any
+from typing import Any, NamedTuple
 
 from sqlalchemy import (
     JSON,
@@ -31,8 +30,8 @@ from sqlalchemy import (
 )
 
 from rules.digests import canonical, plain
-from rules.records import Ask, Evidence
-from rules.slip import Basis, Edition, Hold, Line, Slip, Statement
+from rules.records import Ask, Evidence, Subscriber
+from rules.slip import Basis, Edition, Head, Hold, Line, Slip, Statement
 from service.errors import NotFound, WrongState
 from service.store.base import UtcTime, metadata
 
@@ -58,6 +57,7 @@ edition = Table(
     Column("sent_at", UtcTime),
     Column("sent_by", String),
     Column("hashes", JSON, nullable=False),
+    Column("head", JSON, nullable=False),  # what every slip shares, as it was then
     CheckConstraint("state IN ('draft', 'held', 'signed', 'sent')", name="state"),
 )
 
@@ -85,6 +85,7 @@ slip = Table(
     metadata,
     Column("edition", ForeignKey("edition.id"), primary_key=True),
     Column("subscriber", ForeignKey("subscriber.id"), primary_key=True, index=True),
+    Column("reader", String, nullable=False),  # where and what the reader farms, as it was then; canonical JSON
     Column("body", String, nullable=False),  # canonical JSON
     Column("bytes", Integer, nullable=False),
     Column("canonical_hash", String),  # of subject, text and HTML as rendered for signing
@@ -92,11 +93,24 @@ slip = Table(
 )
 
 
+class Kept(NamedTuple):
+    """A reader's slip as kept, with the hash of what was rendered of it for signing."""
+
+    slip: Slip
+    canonical_hash: str | None
+
+
 # --- drafting ------------------------------------------------------------------------------------
 
 
-def save_draft(c: Connection, record: Edition, statements: Iterable[Statement], slips: Iterable[Slip]) -> list[str]:
-    """Keep a draft; an unsigned one of the same week is replaced, its note and its holds are kept.
+def save_draft(
+    c: Connection,
+    record: Edition,
+    statements: Iterable[Statement],
+    slips: Iterable[Slip],
+    readers: Iterable[Subscriber],
+) -> list[str]:
+    """Keep a draft with its recipients; an unsigned one of the same week is replaced, its holds are kept.
 
     Returns the held statements that the new draft no longer holds, whose figures have changed since: they
     have to be looked at again.
@@ -107,15 +121,16 @@ def save_draft(c: Connection, record: Edition, statements: Iterable[Statement], 
         _expect(before, "draft", "held")
         for table in (slip, edition_statement):
             c.execute(delete(table).where(table.c.edition == record.id))
-        kept = ("state", "note", "hold_reason", "held_by", "held_at")
-        values = asdict(record) | {name: getattr(before, name) for name in kept}
+        kept = ("state", "hold_reason", "held_by", "held_at")
+        values = _edition_row(record) | {name: getattr(before, name) for name in kept}
         c.execute(update(edition).where(edition.c.id == record.id).values(values))
     else:
-        c.execute(insert(edition).values(asdict(record)))
+        c.execute(insert(edition).values(_edition_row(record)))
     given = {each.hash: each for each in statements}
     _save_statements(c, record.id, given, holds)
+    recipients = {each.id: each for each in readers}
     for piece in _pieces(slips, PIECE):
-        c.execute(insert(slip), [_slip_row(record.id, each) for each in piece])
+        c.execute(insert(slip), [_slip_row(record.id, each, recipients[each.subscriber]) for each in piece])
     return sorted(set(holds) - set(given))
 
 
@@ -147,9 +162,15 @@ def _beside(id: str, record: Statement, hold: Hold | None) -> dict[str, Any]:
     }
 
 
-def _slip_row(id: str, record: Slip) -> dict[str, Any]:
+def _edition_row(record: Edition) -> dict[str, Any]:
+    return {name: getattr(record, name) for name in Edition.__dataclass_fields__} | {"head": plain(record.head)}
+
+
+def _slip_row(id: str, record: Slip, recipient: Subscriber) -> dict[str, Any]:
     body = canonical({name: getattr(record, name) for name in ("asks", "mind", "around", "own")})
-    return {"edition": id, "subscriber": record.subscriber, "body": body, "bytes": len(body.encode())}
+    reader = canonical({name: getattr(recipient, name) for name in _READER})
+    size = len(body.encode()) + len(reader.encode())
+    return {"edition": id, "subscriber": record.subscriber, "reader": reader, "body": body, "bytes": size}
 
 
 # --- reading -------------------------------------------------------------------------------------
@@ -193,7 +214,7 @@ def held(c: Connection, id: str) -> dict[str, Hold]:
     return {row.hash: Hold(row.held_reason, row.held_by, row.held_at) for row in c.execute(query)}
 
 
-def slips(c: Connection, id: str, *, size: int = PIECE) -> Iterator[list[tuple[Slip, str | None]]]:
+def slips(c: Connection, id: str, *, size: int = PIECE) -> Iterator[list[Kept]]:
     """All slips of an edition with their canonical hashes, by reader, in pieces."""
     last = ""
     while True:
@@ -201,23 +222,27 @@ def slips(c: Connection, id: str, *, size: int = PIECE) -> Iterator[list[tuple[S
         rows = c.execute(query.order_by(slip.c.subscriber).limit(size)).all()
         if not rows:
             return
-        yield [(slip_of(row.subscriber, row.body), row.canonical_hash) for row in rows]
+        yield [_kept(row) for row in rows]
         last = rows[-1].subscriber
 
 
-def get_slip(c: Connection, id: str, subscriber: str) -> tuple[Slip, str | None] | None:
+def get_slip(c: Connection, id: str, subscriber: str) -> Kept | None:
     """One reader's slip and its canonical hash; None where there is none, or it was deleted with the reader."""
     row = c.execute(select(slip).where(slip.c.edition == id, slip.c.subscriber == subscriber)).one_or_none()
-    return None if row is None else (slip_of(row.subscriber, row.body), row.canonical_hash)
+    return None if row is None else _kept(row)
+
+
+def reader_of(c: Connection, id: str, subscriber: str) -> Subscriber | None:
+    """A recipient as an edition knew them: where and what they farm, without name and address."""
+    row = c.execute(select(slip.c.reader).where(slip.c.edition == id, slip.c.subscriber == subscriber)).one_or_none()
+    if row is None:
+        return None
+    known = json.loads(row.reader)
+    lists = {name: tuple(known[name]) for name in ("crops", "paddocks")}
+    return Subscriber(id=subscriber, email="", name="", **(known | lists))
 
 
 # --- deciding ------------------------------------------------------------------------------------
-
-
-def set_note(c: Connection, id: str, note: str) -> None:
-    """The coordinator's words to all readers; only before signing."""
-    _expect(get(c, id), "draft", "held")
-    c.execute(update(edition).where(edition.c.id == id).values(note=note))
 
 
 def hold_statement(c: Connection, id: str, name: str, *, reason: str, by: str, at: datetime) -> None:
@@ -301,7 +326,10 @@ def _expect(record: Edition, *states: str) -> None:
 
 
 def _edition_of(row: Row[Any]) -> Edition:
-    return Edition(**{name: getattr(row, name) for name in Edition.__dataclass_fields__})
+    values = {name: getattr(row, name) for name in Edition.__dataclass_fields__}
+    day, credits = date.fromisoformat(row.head["day"]), tuple(row.head["attributions"])
+    values["head"] = Head(**(row.head | {"day": day, "attributions": credits}))
+    return Edition(**values)
 
 
 def _statement_of(row: Row[Any]) -> Statement:
@@ -317,6 +345,10 @@ def _statement_of(row: Row[Any]) -> Statement:
     )
 
 
+def _kept(row: Row[Any]) -> Kept:
+    return Kept(slip_of(row.subscriber, row.body), row.canonical_hash)
+
+
 def slip_of(subscriber: str, body: str) -> Slip:
     """A slip from its kept body."""
     kept = json.loads(body)
@@ -325,6 +357,7 @@ def slip_of(subscriber: str, body: str) -> Slip:
 
 
 _PARTS = ("asks", "mind", "around")
+_READER = ("district", "postcode", "crops", "paddocks", "holding", "person")
 
 
 def _pieces(items: Iterable[Any], size: int) -> Iterator[Sequence[Any]]:

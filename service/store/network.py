@@ -13,6 +13,7 @@ from sqlalchemy import (
     JSON,
     BigInteger,
     Boolean,
+    CheckConstraint,
     Column,
     Connection,
     Date,
@@ -137,6 +138,7 @@ subscriber = Table(
     Column("state", String, nullable=False),
     Column("consent", String),
     Column("person", ForeignKey("person.id")),
+    CheckConstraint("state IN ('confirmed', 'paused', 'left')", name="state"),
 )
 
 

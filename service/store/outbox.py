@@ -29,6 +29,7 @@ from sqlalchemy import (
     Table,
     UniqueConstraint,
     bindparam,
+    delete,
     func,
     select,
     update,
@@ -145,6 +146,11 @@ def enqueue(c: Connection, rows: Sequence[Outgoing], now: datetime) -> int:
         fresh_rows = dialect.insert(outbox).values(values).on_conflict_do_nothing(index_elements=["kind", "key"])
         new += len(c.scalars(fresh_rows.returning(outbox.c.id)).all())
     return new
+
+
+def forget_unsigned(c: Connection, edition: str) -> int:
+    """Remove what a signing that did not end has written: rows that nobody could claim yet."""
+    return c.execute(delete(outbox).where(outbox.c.edition == edition, outbox.c.attempts == 0)).rowcount
 
 
 def expire(c: Connection, now: datetime) -> int:

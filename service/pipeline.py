@@ -1,0 +1,337 @@
+"""The story of a week, top to bottom: each step is a plain function that runs once and says what it did.
+
+    init ─► take ─► run_rules ─► draft ─► show, hold ─► sign ─► send ─► trail
+
+The command line, the pages and the demo call these and nothing below them. Only this file knows the order.
+"""
+
+from collections.abc import Callable, Iterator, Sequence
+from contextlib import contextmanager
+from dataclasses import replace
+from datetime import datetime
+from functools import cache
+from pathlib import Path
+from typing import Any
+from zoneinfo import ZoneInfo
+
+from rules.book import Book
+from rules.records import Known, Person, Signal
+from rules.slip import Edition
+from service import intake, mailing, rulebook, showing, signals, tracing, weather
+from service import settings as settings_file
+from service.clock import Clock, iso_week
+from service.delivery import smtp, worker
+from service.delivery.maildir_server import MaildirServer
+from service.editions.compose import Composed, compose
+from service.errors import Refused, WrongState
+from service.intake.kinds import kind_of
+from service.intake.network_files import take_network
+from service.known import know
+from service.settings import Settings
+from service.store import audit, editions, health, network, outbox, rules, schema
+from service.store import signals as signal_store
+from service.store.base import Store
+from service.tokens import Tokens
+
+Outcome = dict[str, Any]
+Progress = Callable[[int, int | None, str], None] | None
+SIGNERS = frozenset({"coordinator", "deputy"})
+
+
+# --- before the first week ----------------------------------------------------------------------
+
+
+def init(file: Path) -> Outcome:
+    """Write a commented settings file, the link keys and the empty store; an existing file is kept."""
+    if file.exists():
+        raise Refused(f"{file} is there already; edit it, or name another file")
+    file.parent.mkdir(parents=True, exist_ok=True)
+    file.write_text(settings_file.commented_file(), encoding="utf-8")
+    settings = settings_file.read(file)
+    settings_file.keys(settings)
+    open_store(settings).close()
+    return {"settings": str(file), "keys": settings.keys_file, "store": settings.store.url, "next": "leafturn doctor"}
+
+
+def open_store(settings: Settings) -> Store:
+    """The store in its newest shape; an empty one is filled with tables."""
+    store = Store.open(settings.store.url, settings.store.busy_s)
+    schema.upgrade(store)
+    return store
+
+
+# --- in -----------------------------------------------------------------------------------------
+
+
+def take(
+    store: Store,
+    file: Path,
+    *,
+    clock: Clock,
+    progress: Progress = None,
+    history: bool = False,
+    district: str | None = None,
+    source: str = "csv",
+    keep_good: Path | None = None,
+    revise: bool = False,
+) -> Outcome:
+    """Take a file in, whatever it holds: all of it, or nothing and what to mend."""
+    kind = kind_of(file)
+    if kind == "observations":
+        counts = intake.take_observations(
+            store,
+            file,
+            clock=clock,
+            source=source,
+            district=district,
+            history=history,
+            keep_good=keep_good,
+            revise=revise,
+            progress=progress,
+        )
+    elif kind == "station_days":
+        counts = weather.take_station_days(store, file, clock=clock, history=history)
+    else:
+        counts = take_network(store, file, clock=clock)
+    return {"file": file.name, "kind": kind, **counts}
+
+
+# --- what the rules say -------------------------------------------------------------------------
+
+
+def run_rules(store: Store, district_id: str, *, clock: Clock, as_of: datetime | None = None) -> Outcome:
+    """Run the live rules on what was knowable at a moment, now if none is given, and keep what they say."""
+    moment = clock.now()
+    if as_of is not None:
+        moment = as_of if as_of.tzinfo else as_of.replace(tzinfo=_zone(store, district_id))
+    _, _, found = _said(store, district_id, moment)
+    with store.writing() as c:
+        signal_store.save(c, found)
+    return {"district": district_id, "as_of": moment, "signals": [showing.signal_line(each) for each in found]}
+
+
+# --- the edition --------------------------------------------------------------------------------
+
+
+def draft(store: Store, district_id: str, *, clock: Clock, by: str = "leafturn") -> Outcome:
+    """Draft this week's edition from what is knowable now. An unsigned draft of the week is replaced."""
+    now = clock.now()
+    known, book, found = _said(store, district_id, now)
+    week = iso_week(known.today)
+    edition = Edition(
+        id=f"{district_id}-{week}",
+        district=district_id,
+        week=week,
+        as_of=now,
+        drafted_at=now,
+        drafted_by=by,
+        hashes=mailing.hashes(book),
+        head=mailing.head(f"{district_id}-{week}", known),
+    )
+    with store.reading() as c:
+        readers = network.subscribers(c, district_id)
+    composed = compose(known, found, book, readers)
+    with store.writing() as c:
+        signal_store.save(c, found)
+        lost = editions.save_draft(c, edition, composed.statements.values(), composed.slips.values(), readers)
+        audit.add(c, who=by, at=now, what="draft", subject=edition.id, why="the week's edition")
+    return {
+        "edition": edition.id,
+        "signals": len(found),
+        "statements": len(composed.statements),
+        "readers": len(readers),
+        "with_asks": sum(bool(slip.asks) for slip in composed.slips.values()),
+        "holds_to_look_at_again": lost,
+    }
+
+
+def show(store: Store, id: str, *, reader: str | None = None) -> Outcome:
+    """An edition's statements in words, how many readers each touches, and what the gate marks; or one digest."""
+    book = book_of(store, id)
+    if reader is not None:
+        return {"edition": id, "reader": reader, "digest": mailing.digest_text(store, id, reader, book)}
+    with store.reading() as c:
+        edition = editions.get(c, id)
+    return showing.edition(store, id, book, know(store, book, edition.district, edition.as_of))
+
+
+def hold(
+    store: Store, id: str, statement: str | None, *, by: str, reason: str, clock: Clock, lift: bool = False
+) -> Outcome:
+    """Hold one statement of a draft, or the whole edition, with a reason that is kept; or lift such a hold."""
+    now, what = clock.now(), "lift" if lift else "hold"
+    with store.writing() as c:
+        _signer(network.people(c, editions.get(c, id).district), by)
+        if lift:
+            editions.release(c, id, statement)
+        elif statement is None:
+            editions.hold_edition(c, id, reason=reason, by=by, at=now)
+        else:
+            editions.hold_statement(c, id, statement, reason=reason, by=by, at=now)
+        audit.add(c, who=by, at=now, what=what, subject=f"{id} {statement or ''}".strip(), why=reason)
+    return {"edition": id, what: statement or "the whole edition", "reason": reason}
+
+
+def sign(
+    store: Store,
+    settings: Settings,
+    id: str,
+    *,
+    by: str,
+    clock: Clock,
+    note: str = "",
+    progress: Progress = None,
+) -> Outcome:
+    """Freeze recipients, statements and wording, and write the outbox. Nothing leaves before `send`.
+
+    Everything is said again from the rows as they were known at the draft, without what is held, and every
+    digest passes the gate first: one unsafe word anywhere, and nothing is signed.
+    """
+    now = clock.now()
+    with store.reading() as c:
+        edition = editions.get(c, id)
+        held = frozenset(editions.held(c, id))
+        signer = _signer(network.people(c, edition.district), by)
+        readers = network.subscribers(c, edition.district)
+    if edition.state != "draft":
+        raise WrongState(f"edition {id} is {edition.state}; only a draft can be signed")
+    known, book, found = _said(store, edition.district, edition.as_of)
+    mailing.expect_same(edition, mailing.hashes(book))
+    composed = compose(known, found, book, readers, held)
+    signed = replace(edition, note=note, head=mailing.head(id, known, signer.name, note))
+    canonical = mailing.render_all(signed, composed, book, known, readers, progress)
+    rows = [mailing.outgoing(signed, reader, settings, now) for reader in readers]
+    with store.writing() as c:
+        editions.save_draft(c, signed, composed.statements.values(), composed.slips.values(), readers)
+        outbox.forget_unsigned(c, id)
+    for start in range(0, len(readers), editions.PIECE):
+        piece = slice(start, start + editions.PIECE)
+        with store.writing() as c:
+            editions.set_canonical(c, id, {each.id: canonical[each.id] for each in readers[piece]})
+            outbox.enqueue(c, rows[piece], now)
+    with store.writing() as c:
+        editions.mark_signed(c, id, by=by, at=now)
+        audit.add(c, who=by, at=now, what="sign", subject=id, why=note or "read and signed")
+    return {"edition": id, "signed_by": signer.name, "slips": len(readers), "held": len(held)}
+
+
+def send(
+    store: Store, settings: Settings, id: str, *, clock: Clock, by: str = "leafturn", progress: Progress = None
+) -> Outcome:
+    """Let a signed edition go and deliver what is due; run again, it delivers what is left."""
+    with store.writing() as c:
+        edition = editions.get(c, id)
+        if edition.state != "sent":
+            editions.mark_sent(c, id, by=by, at=clock.now())
+            audit.add(c, who=by, at=clock.now(), what="send", subject=id, why="signed")
+        waiting = sum(outbox.counts(c, id).get(state, 0) for state in outbox.WAITING)
+    mailer = mailing.Mailer(store, settings, _tokens(settings), clock, lambda edition: book_of(store, edition))
+    sender = smtp.SmtpSender(settings.mail, password=settings_file.mail_password(settings))
+
+    def moved(counts: Any) -> None:
+        if progress:
+            progress(sum(counts.values()), waiting, "Sending")
+
+    return {"edition": id, **worker.deliver(store, sender, mailer, clock, settings, moved)}
+
+
+@contextmanager
+def mail_server(folder: Path) -> Iterator[MaildirServer]:
+    """A real SMTP server on this machine that keeps every mail in a Maildir: for the demo, and for trying out."""
+    with MaildirServer(folder) as server:
+        yield server
+
+
+# --- back ---------------------------------------------------------------------------------------
+
+
+def trail(store: Store, id: str, reader: str, *, sentence: str | None = None) -> Outcome:
+    """From a sentence back to figures, rule and rows, and the whole digest said again from the rows as they stand."""
+    with store.reading() as c:
+        edition = editions.get(c, id)
+        held = frozenset(editions.held(c, id))
+        kept = editions.reader_of(c, id, reader)
+
+    def again() -> tuple[Known, Composed]:
+        known, book, found = _said(store, edition.district, edition.as_of)
+        return known, compose(known, found, book, [kept] if kept else [], held)
+
+    return tracing.trail(store, edition, reader, book_of(store, id), again, sentence)
+
+
+def book_of(store: Store, id: str) -> Book:
+    """The rule book as an edition used it."""
+    with store.reading() as c:
+        return _book(store, editions.get(c, id).as_of)
+
+
+class Pages:
+    """What the pages ask for: the three things that a mailed link can do."""
+
+    def __init__(self, store: Store, settings: Settings) -> None:
+        self._store, self._settings, self._tokens = store, settings, _tokens(settings)
+
+    def show(self, token: str, at: datetime) -> str:
+        id, _, reader = self._tokens.read("show", token, at).rpartition(":")
+        links = mailing.Links(self._settings, self._tokens, at)
+        return mailing.digest_page(self._store, id, reader, book_of(self._store, id), links)
+
+    def check_unsubscribe(self, token: str, at: datetime) -> None:
+        self._tokens.read("unsubscribe", token, at)
+
+    def unsubscribe(self, token: str, at: datetime) -> None:
+        reader = self._tokens.read("unsubscribe", token, at)
+        with self._store.writing() as c:
+            if network.set_subscriber_state(c, reader, "left"):
+                audit.add(c, who=reader, at=at, what="unsubscribe", subject=reader, why="their own link")
+
+
+# --- for the doctor -----------------------------------------------------------------------------
+
+
+def examine_store(store: Store) -> tuple[bool, str, datetime | None]:
+    """Whether the store is well, in words, and the newest moment that it has heard of."""
+    return health.examine(store)
+
+
+def examine_mail(settings: Settings) -> str:
+    """A real greeting with the mail server, in words; MailDown where it does not answer."""
+    return smtp.greet(settings.mail, settings_file.mail_password(settings))
+
+
+# --- the same for several steps -----------------------------------------------------------------
+
+
+def _said(store: Store, district_id: str, as_of: datetime) -> tuple[Known, Book, list[Signal]]:
+    """What was knowable at a moment, the rules of that moment, and what they say of it."""
+    book = _book(store, as_of)
+    known = know(store, book, district_id, as_of)
+    return known, book, signals.evaluate(known, book)
+
+
+def _book(store: Store, as_of: datetime) -> Book:
+    with store.reading() as c:
+        return rulebook.with_versions(_catalogue(), rules.versions(c, as_of))
+
+
+@cache
+def _catalogue() -> Book:
+    return rulebook.load()
+
+
+def _zone(store: Store, district_id: str) -> ZoneInfo:
+    with store.reading() as c:
+        return ZoneInfo(network.get_district(c, district_id).zone)
+
+
+def _tokens(settings: Settings) -> Tokens:
+    return Tokens(settings_file.keys(settings))
+
+
+def _signer(people: Sequence[Person], by: str) -> Person:
+    """The person who decides; a coordinator or deputy of the district."""
+    for person in people:
+        if person.id == by and SIGNERS & set(person.roles):
+            return person
+    who = ", ".join(person.id for person in people if SIGNERS & set(person.roles)) or "nobody yet; take a people file"
+    raise Refused(f"{by!r} may not decide on this district's editions; who may: {who}")

@@ -1,0 +1,1 @@
+"""The store's shape, one step at a time."""
