@@ -7,6 +7,7 @@ from datetime import date, datetime
 from rules.book import Book
 from rules.records import District, Paddock, Postcode
 from service.clock import local_day
+from service.errors import NotFound
 from service.store import network
 from service.store.base import Store
 
@@ -53,8 +54,10 @@ def frame_of(store: Store, names: Names, now: datetime, district: str | None = N
     """The network of a store as it is known now. The only district there is needs no naming."""
     with store.reading() as c:
         districts = {each.id: each for each in network.districts(c)}
-        if district is not None or not districts:
-            network.get_district(c, district or "")
+        if not districts:
+            raise NotFound("there is no district yet; take a district file first")
+        if district is not None:
+            network.get_district(c, district)  # says which there are, if it is none of them
         postcodes: dict[str, dict[str, Postcode]] = {}
         paddocks: dict[str, Paddock] = {}
         people: set[str] = set()

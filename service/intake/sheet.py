@@ -13,6 +13,7 @@ from pathlib import Path
 import numpy as np
 import numpy.typing as npt
 import pyarrow as pa
+import pyarrow.compute as pc
 import pyarrow.csv as arrow_csv
 
 from rules.records import Refusal
@@ -51,7 +52,7 @@ def read(path: Path) -> Sheet:
     header = [cell.strip().lower() for cell in next(records, [])]
     _check_header(path, header)
     sheet = _regular(text, header) or _irregular(records, header)
-    if not len(sheet.numbers) and not sheet.misfits:
+    if not sheet.misfits and not any(pc.any(pc.not_equal(column, "")).as_py() for column in sheet.columns.columns):
         raise BadInput(f"{path.name} has a header and no rows; add at least one")
     return sheet
 
