@@ -105,7 +105,9 @@ def _linked(text: str, links: dict[str, str]) -> str:
 
 def _part(subtype: str, text: str) -> bytes:
     """A part with its own headers: as it is where it can travel so, else quoted-printable (RFC 2045)."""
-    data = text.replace("\r\n", "\n").replace("\r", "\n").replace("\n", "\r\n").encode()
+    if "\r" in text:
+        text = text.replace("\r\n", "\n").replace("\r", "\n")
+    data = text.replace("\n", "\r\n").encode()
     if not data.endswith(b"\r\n"):
         data += b"\r\n"
     charset, encoding = b"us-ascii", b"7bit"
@@ -120,7 +122,7 @@ def _travels_as_it_is(data: bytes) -> bool:
     """Printable ASCII, no line over 998, no space at the end of one (RFC 2045 sections 2.7 and 6.7)."""
     if data.translate(None, _PRINTABLE) or b" \r\n" in data or b"\t\r\n" in data:
         return False
-    return max(map(len, data.split(b"\r\n"))) <= _HARD_LINE
+    return max(map(len, data.split(b"\n"))) <= _HARD_LINE + len(b"\r")
 
 
 def _boundary(parts: list[bytes], message_id: str) -> bytes:

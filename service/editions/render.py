@@ -10,19 +10,19 @@ same bytes.
 
 import hashlib
 import re
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping
 from functools import cache, lru_cache
 from importlib.resources.abc import Traversable
-from typing import Any
 
-from jinja2 import Environment, FunctionLoader, StrictUndefined
+from jinja2 import Environment, FunctionLoader, StrictUndefined, Template
 
-from rules.slip import SHOW_LINK, UNSUBSCRIBE_LINK, Rendered, SlipView
+from rules.slip import SHOW_LINK, UNSUBSCRIBE_LINK, Rendered, Sentence, SlipView
 from service.shipped import shipped
 
 RENDERER = "1"  # raise it when the same view and templates would give other bytes
 
-_PARTS = ("opening", "before", "card", "kept_in_mind", "part", "closing")
+# The macros that digests share, by file, in the order in which they may use each other.
+_PARTS = {"_facts": ("facts",), "_parts": ("opening", "before", "card", "kept_in_mind", "part", "closing")}
 _SPACE = re.compile(r"\s+")
 # Control characters, lone surrogates, and the marks that reorder text beyond the name they came in; the
 # marks that only say "right-to-left starts here" (U+200E, U+200F, U+061C) stay.
@@ -43,6 +43,11 @@ def paragraphs(text: str) -> list[str]:
     return [line for line in map(tidy, re.split(r"\n\s*\n", text)) if line]
 
 
+def joined(sentences: Iterable[Sentence]) -> str:
+    """Sentences as one run of text."""
+    return " ".join(tidy(sentence.text) for sentence in sentences)
+
+
 def ascii_html(html: str) -> str:
     """HTML with every other character as a reference: it travels as it is, and no charset can garble it."""
     return type(html)(html.encode("ascii", "xmlcharrefreplace").decode("ascii"))  # escaped stays marked as such
@@ -53,22 +58,22 @@ class Renderer:
 
     def __init__(self, keep: int = 10_000) -> None:
         inline = _inline_rules(_source("email/_inline.css"))
-        self._subject, _ = _shape("email/digest/subject.txt", None, 0, {})
-        self._text, self._text_parts = _shape("email/digest/body.txt", "email/digest/_parts.txt", keep, {})
-        self._html, self._html_parts = _shape("email/digest/body.html", "email/digest/_parts.html", keep, inline)
-        self._page, _ = _shape("web/digest.html", None, 0, {})
+        self._subject = _environment("txt", {}).get_template("email/digest/subject.txt")
+        self._text = _with_parts("txt", {}, keep)
+        self._html = _with_parts("html", inline, keep)
+        self._page = _environment("html", {}).get_template("web/digest.html")
 
     def render(self, view: SlipView) -> Rendered:
         """The canonical subject, text and HTML of one slip, with link placeholders."""
         return Rendered(
             subject=self._subject.render(view=view).strip(),
-            text=self._text.render(self._text_parts, view=view),
-            html=ascii_html(self._html.render(self._html_parts, view=view)),
+            text=self._text.render(view=view),
+            html=ascii_html(self._html.render(view=view)),
         )
 
     def page(self, view: SlipView) -> str:
         """The same digest as a page, with what stands behind each card one tap away."""
-        return str(self._page.render(view=view))
+        return self._page.render(view=view)
 
 
 def render(view: SlipView) -> Rendered:
@@ -113,22 +118,28 @@ def _source(name: str) -> str:
     return shipped("templates", *name.split("/")).read_text(encoding="utf-8")
 
 
-def _shape(body: str, parts: str | None, keep: int, inline: Mapping[str, str]) -> tuple[Any, dict[str, Any]]:
-    """A template, and what its names stand for: the links, and its parts, kept or made anew each time."""
+def _environment(kind: str, inline: Mapping[str, str]) -> Environment:
     environment = Environment(
         loader=FunctionLoader(lambda name: _inlined(_source(name), inline)),
-        autoescape=not body.endswith(".txt"),
+        autoescape=kind == "html",
         undefined=StrictUndefined,
         auto_reload=False,
-        trim_blocks=False,
     )
-    environment.filters |= {"tidy": tidy, "paragraphs": paragraphs}
+    environment.filters |= {"tidy": tidy, "paragraphs": paragraphs, "joined": joined}
     environment.globals |= {"show_link": SHOW_LINK, "unsubscribe_link": UNSUBSCRIBE_LINK}
-    macros = environment.get_template(parts).module if parts else None
-    made = {name: getattr(macros, name) for name in _PARTS if macros}
-    if keep:
-        made = {name: _kept(macro, keep, as_html=bool(inline)) for name, macro in made.items()}
-    return environment.get_template(body), made
+    return environment
+
+
+def _with_parts(kind: str, inline: Mapping[str, str], keep: int) -> Template:
+    """A body whose parts are filters (those are called at once), kept or made anew each time."""
+    environment = _environment(kind, inline)
+    for file, names in _PARTS.items():
+        macros = environment.get_template(f"email/digest/{file}.{kind}").module
+        made = {name: getattr(macros, name) for name in names}
+        if keep:
+            made = {name: _kept(macro, keep, as_html=kind == "html") for name, macro in made.items()}
+        environment.filters |= made
+    return environment.get_template(f"email/digest/body.{kind}")
 
 
 def _kept(macro: Callable[..., str], keep: int, *, as_html: bool) -> Callable[..., str]:

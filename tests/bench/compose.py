@@ -49,6 +49,19 @@ def _said(text: str) -> Sentence:
     return Sentence(text, "fixed:bench")
 
 
+BEFORE = (
+    _said("Get the owner's leave before you go in."),
+    _said("Clean boots, tools and tyres on the way in and out."),
+)
+WHEN = _said("Wednesday or Thursday, 11:30–2:30, when it is warm and sunny")
+HOW = _said("5 spots, 20 plants each; begin at the edge and along the fence line")
+NUMBER = (_said("10 a plant at one true leaf."), _said("Common practice; its doubt is wide."))
+CAUTION = _said("Your seed dressing may hide or delay feeding. It still needs a look.")
+MIND = (_said("Cutworms: pasture came before this crop."),)
+ACTING = _said("Before you act: be sure what it is, ask a licensed adviser, follow the label and local law.")
+FOOT = (_said("Your usual crop checks still stand."), _said("Worked out from members' reports and 4 stations."))
+
+
 @lru_cache(maxsize=20_000)
 def _card(week: int, cell: int, crop: str, place: int) -> Card:
     """A card as one cell, crop and stage have it."""
@@ -59,10 +72,10 @@ def _card(week: int, cell: int, crop: str, place: int) -> Card:
         minutes=10 + 5 * place,
         title=_said(f"{pest.capitalize()} in young {crop}"),
         what=(_said(f"Found in {cell % 7 + 1} of {cell % 11 + 8} looks within {5 + cell % 20} km since week {week}."),),
-        when=_said("Wednesday or Thursday, 11:30–2:30, when it is warm and sunny"),
-        how=_said("5 spots, 20 plants each; begin at the edge and along the fence line"),
-        number=(_said("10 a plant at one true leaf."), _said("Common practice; its doubt is wide.")),
-        caution=_said("Your seed dressing may hide or delay feeding. It still needs a look."),
+        when=WHEN,
+        how=HOW,
+        number=NUMBER,
+        caution=CAUTION,
         details=(Detail("Why we ask", (_said(f"Cell weather of {cell} has likely brought it."),)),),
     )
 
@@ -76,19 +89,17 @@ def view_of(week: int, reader: Reader) -> SlipView:
         subject=_said(f"This week: {answer}"),
         day="Tue 12 May",
         answer=_said(answer),
-        before_looking=(_said("Get the owner's leave before you go in."), _said("Clean boots, tools and tyres.")),
+        before_looking=BEFORE,
         cards=cards,
-        keep_in_mind=(_said("Cutworms: pasture came before this crop."),),
+        keep_in_mind=MIND,
         silence=(),
         around=(
             _said(f"{reader.number % 23 + 3} looks within 20 km of you, {reader.number % 5} of them found mites."),
         ),
         note=(_said(f"Thanks to all who looked in week {week}."),),
         signed_by="Ivy Marsh",
-        before_acting=_said(
-            "Before you act: be sure what it is, ask a licensed adviser, follow the label and local law."
-        ),
-        foot=(_said("Your usual crop checks still stand."), _said("Worked out from members' reports and 4 stations.")),
+        before_acting=ACTING,
+        foot=FOOT,
     )
 
 
