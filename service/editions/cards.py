@@ -6,10 +6,10 @@ from dataclasses import dataclass
 from rules.book import LIVE_MARKS, Book, Pest, Sourced
 from rules.slip import Card, Detail, Line, Sentence, Statement
 from service.editions import sentences as say
-from service.editions.told import ADVISER, NO_NUMBER, against, origin, told, verdict, why
+from service.editions.told import ADVISER, NO_NUMBER, against, besides, origin, told, verdict, why
 
 WORDS = 51  # of the 60; the rest is for the card's labels
-NOT_UP_YET = "If not yet: weeds, pasture edge, fence line."
+NOT_UP_YET = "Not up? Weeds, pasture edge, fence line."
 NOT_KNOWN = "It is not yet known how often this is right."
 WHERE_UP = {"reported", "up", "any"}
 
@@ -68,7 +68,7 @@ def _how(pest: Pest, line: Line) -> str:
         return f"{spots}."
     units = pest.units_per_spot.value
     one, many = say.COUNTED[pest.unit]
-    return f"{spots}, {say.how_many(units, one, many)} each."
+    return f"{spots}, {one if units == 1 else f'{units} {many}'} each."
 
 
 def _fit(pieces: Sequence[Piece], left: int) -> tuple[list[Piece], list[Piece]]:
@@ -98,9 +98,11 @@ def _pieces(line: Line, said: Sequence[Statement], pest: Pest, book: Book) -> li
     pieces = [Piece("what", sentences[0], must=True)]
     if first.wording == "count":
         pieces.append(Piece("what", verdict(first, pest.relook_days.value), must=True))
-    pieces += _stage_pieces(line, pest, book)
-    pieces += _number(line, first, pest, book)
+    else:  # whoever has counted knows where to look
+        pieces += _stage_pieces(line, pest, book)
     pieces += _own_caution(pest, book)
+    pieces += _number(line, first, pest, book)
+    pieces += [Piece("what", more) for each in said if (more := besides(each))]
     pieces += _found(line)
     for each, sentence in zip(said[1:], sentences[1:], strict=True):
         pieces.append(Piece("what", sentence))
@@ -135,7 +137,7 @@ def _number(line: Line, first: Statement, pest: Pest, book: Book) -> list[Piece]
     code, name = line.own.get("code"), f"catalogue:{pest.id}.thresholds"
     found = say.threshold(pest, line.own["crop"], code)
     if found is None:
-        return [Piece("number", Sentence(NO_NUMBER, name), "The number")]
+        return [Piece("number", Sentence("No agreed number.", name), "The number")]
     stages = [say.stage(book, line.own["crop"], each) for each in (found.stage_from, found.stage_to)]
     at = "" if code is not None else f", {stages[0]} to {stages[1]}"
     text = (
@@ -145,9 +147,13 @@ def _number(line: Line, first: Statement, pest: Pest, book: Book) -> list[Piece]
 
 
 def _own_caution(pest: Pest, book: Book) -> list[Piece]:
-    needs = [name for name in ("night", "lifts_cover") if getattr(pest, name)]
-    cautions = [each for need in needs for each in book.cautions if need in each.when]
-    return [Piece("caution", Sentence(each.text, f"caution:{each.id}"), "Looking safely") for each in cautions[:1]]
+    return [Piece("caution", each) for each in cautions_of(pest, book)[:1]]
+
+
+def cautions_of(pest: Pest, book: Book) -> list[Sentence]:
+    """What a look for this pest needs to be safe, besides the general cautions."""
+    needs = {name for name in ("night", "lifts_cover") if getattr(pest, name)}
+    return [Sentence(each.text, f"caution:{each.id}") for each in book.cautions if needs & {*each.when}]
 
 
 def _found(line: Line) -> list[Piece]:
@@ -176,8 +182,9 @@ def _details(said: Sequence[Statement], pest: Pest, moved: Sequence[Piece], line
     details = {"Why we ask": [*(each for statement in said for each in why(statement))]}
     details["Why we ask"].append(Sentence(NOT_KNOWN, "fixed:not_known"))
     for piece in moved:
-        details.setdefault(piece.heading, []).append(piece.sentence)
-    details.setdefault("The number", []).extend(_numbers(line, pest, book))
+        if piece.part == "what":  # the number is said in full below, the caution above the first card
+            details.setdefault(piece.heading, []).append(piece.sentence)
+    details["The number"] = _numbers(line, pest, book)
     details["What the damage looks like"] = _facts(pest, "damage", [pest.damage])
     details["How to look"] = _facts(pest, "method", [pest.method]) + _facts(pest, "when", pest.when[1:])
     details["Easily taken for it"] = [
@@ -205,6 +212,8 @@ def _numbers(line: Line, pest: Pest, book: Book) -> list[Sentence]:
             number = f"{say.between(each.low, each.high)} {say.A_UNIT[each.unit]}"
             text = f"{say.capital(stages or crop)}: {number} ({say.reference(each.mark, each.source)}). {each.note}"
             found.append(Sentence(text.strip(), f"catalogue:{pest.id}.thresholds"))
-    if found:
+    if say.threshold(pest, crop, line.own.get("code")) is None:
+        found.insert(0, Sentence(NO_NUMBER, f"catalogue:{pest.id}.thresholds"))
+    if any(each.crop == crop and each.mark in LIVE_MARKS for each in pest.thresholds):
         found.append(Sentence(f"At or above the number: {ADVISER}.", "fixed:number"))
     return found

@@ -16,8 +16,8 @@ A_UNIT = {  # as in "10 a plant"
     "per_plant": "a plant",
     "per_100cm2": "in 10 × 10 cm",
     "per_m2": "a square metre",
-    "per_metre_row": "in a metre of row",
-    "per_half_metre_row": "in half a metre of row",
+    "per_metre_row": "a metre of row",
+    "per_half_metre_row": "a half metre",
     "holes_per_leaf": "holes a leaf",
     "per_10_sweeps": "in 10 sweeps",
     "per_trap_night": "a trap a night",
@@ -25,16 +25,16 @@ A_UNIT = {  # as in "10 a plant"
     "percent_plants": "plants in 100",
 }
 COUNTED = {  # what is counted at a spot: one, many
-    "per_plant": ("plant", "plants"),
-    "per_100cm2": ("square of 10 × 10 cm", "squares of 10 × 10 cm"),
-    "per_m2": ("square", "squares"),
-    "per_metre_row": ("metre of row", "metres of row"),
-    "per_half_metre_row": ("half metre of row", "half metres of row"),
-    "holes_per_leaf": ("leaf", "leaves"),
-    "per_10_sweeps": ("set of 10 sweeps", "sets of 10 sweeps"),
-    "per_trap_night": ("trap", "traps"),
-    "per_refuge": ("tile", "tiles"),
-    "percent_plants": ("plant", "plants"),
+    "per_plant": ("a plant", "plants"),
+    "per_100cm2": ("10 × 10 cm", "squares of 10 × 10 cm"),
+    "per_m2": ("a square", "squares"),
+    "per_metre_row": ("a metre of row", "metres of row"),
+    "per_half_metre_row": ("half a metre", "half metres"),
+    "holes_per_leaf": ("a leaf", "leaves"),
+    "per_10_sweeps": ("10 sweeps", "sets of 10 sweeps"),
+    "per_trap_night": ("a trap", "traps"),
+    "per_refuge": ("a tile", "tiles"),
+    "percent_plants": ("a plant", "plants"),
 }
 _DOI = re.compile(r"doi (10\.\S+?)[;,.]?(?:\s|$)")
 
@@ -108,8 +108,8 @@ def near(value: Any) -> str:
     if direction is None:
         return f"within {-5 * (-(band + doubt) // 5) if doubt > 1 else band} km"
     bands = {5: "within 5 km to the", 10: "5–10 km", 20: "10–20 km"}
-    give = f", give or take {doubt} km" if doubt >= 10 else ""
-    return f"{bands[band]} {direction}{give}"
+    about = "about " if doubt >= 10 else ""
+    return f"{about}{bands[band]} {direction}"
 
 
 def source(mark: str, words: str) -> str:
@@ -124,7 +124,7 @@ def source(mark: str, words: str) -> str:
 def reference(mark: str, words: str) -> str:
     """Where a number comes from, to look it up: by its number, since titles may hold words we don't send."""
     found = _DOI.search(words)
-    return f"{source(mark, words)} (doi {found[1]})" if found else source(mark, words)
+    return f"{source(mark, words)}, doi {found[1]}" if found else source(mark, words)
 
 
 def threshold(pest: Pest, crop_id: str, code: int | None) -> Threshold | None:

@@ -2,7 +2,7 @@
 
 from collections import defaultdict
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import date
 from functools import partial
 
@@ -34,7 +34,8 @@ class Stages:
         self._paddocks = known.paddocks
         self._reports: Mapping[str, list[Observation]] = defaultdict(list)
         for row in known.observations:
-            if row.paddock and row.stage is not None and row.knowable_from <= known.as_of:
+            fresh = known.season_from <= row.day and row.knowable_from <= known.as_of
+            if row.paddock and fresh and (row.crop or row.stage is not None):
                 self._reports[row.paddock].append(row)
         self._done: dict[tuple[str, date], Stand] = {}
 
@@ -43,8 +44,16 @@ class Stages:
         key = (paddock, day)
         if key not in self._done:
             reports = [row for row in self._reports.get(paddock, ()) if row.day <= day]
-            self._done[key] = _stand(self._paddocks[paddock], reports, day)
+            self._done[key] = _stand(_with_crop(self._paddocks[paddock], reports), reports, day)
         return self._done[key]
+
+
+def _with_crop(paddock: Paddock, reports: Sequence[Observation]) -> Paddock:
+    """A paddock whose crop nobody entered has the one last reported from it this season."""
+    if paddock.crop:
+        return paddock
+    named = [row for row in reports if row.crop]
+    return replace(paddock, crop=max(named, key=lambda row: row.day).crop) if named else paddock
 
 
 def _stand(paddock: Paddock, reports: Sequence[Observation], day: date) -> Stand:
@@ -58,8 +67,8 @@ def _stand(paddock: Paddock, reports: Sequence[Observation], day: date) -> Stand
 
 def stands(reader: Subscriber, known: Known, stages: Stages) -> list[Stand]:
     """The reader's crops: paddock by paddock, then crops that no paddock of theirs is known to hold."""
-    own = [id for id in reader.paddocks if id in known.paddocks and known.paddocks[id].crop]
-    found = [stages.stand(id, known.today) for id in own]
+    own = [stages.stand(id, known.today) for id in reader.paddocks if id in known.paddocks]
+    found = [stand for stand in own if stand.crop]
     held = {stand.crop for stand in found}
     return found + [Stand(crop, "unknown") for crop in reader.crops if crop not in held]
 

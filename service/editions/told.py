@@ -37,9 +37,8 @@ def _counted_near(_figures: Mapping[str, Any], near: Any, _paddock: str | None) 
 
 def _first_seen(figures: Mapping[str, Any], near: Any, _paddock: str | None) -> str:
     finds, looks = figures["finds"], say.how_many(figures["looks"], "look")
-    which = f"earliest of {finds:,} finds we have" if finds > 1 else "the only find we have"
-    earlier = " Earlier than usual for this much looking." if figures["earlier_than_usual"] else ""
-    return f"First this season, {say.near(near)}: {which}, from {looks}.{earlier}"
+    which = f"earliest of {finds:,} we have" if finds > 1 else "the only one we have"
+    return f"First this season, {say.near(near)}: {which}, from {looks}."
 
 
 _SAY: Mapping[str, Callable[[Mapping[str, Any], Any, str | None], str]] = {
@@ -48,6 +47,13 @@ _SAY: Mapping[str, Callable[[Mapping[str, Any], Any, str | None], str]] = {
     "counted_near": _counted_near,
     "first_seen": _first_seen,
 }
+
+
+def besides(statement: Statement) -> Sentence | None:
+    """What a card says of a statement besides, if there is room."""
+    if statement.figures.get("earlier_than_usual"):
+        return Sentence("Earlier than usual for this much looking.", origin(statement))
+    return None
 
 
 # --- what a count means ----------------------------------------------------------------------------
@@ -101,19 +107,17 @@ def _why_count(figures: Mapping[str, Any]) -> list[str]:
 
 
 def _why_counted_near(_figures: Mapping[str, Any]) -> list[str]:
-    return ["Someone counted it there in the last two weeks. How many says little about your paddock."]
+    return ["Someone counted it there in the last two weeks. How many there were says little about your paddock."]
 
 
 def _why_first_seen(figures: Mapping[str, Any]) -> list[str]:
     chance, seasons = figures["chance"], figures["past_seasons"]
     if chance is None or not seasons:
         return ["There is too little from past seasons to say how unusual this is."]
-    once = max(1, round(1 / chance)) if chance > 0 else None
-    odds = f"about once in {once} seasons" if once else "hardly ever"
-    return [
-        f"With this much looking, a usual season would have shown it by now {odds} "
-        f"(from {say.how_many(seasons, 'past season')})."
-    ]
+    tenths = round(10 * chance)
+    share = f"about {tenths} of 10" if tenths else "fewer than 1 of 10"
+    past = say.how_many(seasons, "past season")
+    return [f"In {share} usual seasons, this much looking would have shown it by now (going by {past})."]
 
 
 _WHY: Mapping[str, Callable[[Mapping[str, Any]], list[str]]] = {

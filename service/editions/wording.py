@@ -11,7 +11,7 @@ from rules.book import Book
 from rules.records import Ask
 from rules.slip import Card, Head, Line, Sentence, Slip, SlipView, Statement
 from service.editions import sentences as say
-from service.editions.cards import card
+from service.editions.cards import card, cautions_of
 from service.editions.told import origin, told, verdict
 
 USUAL = "Your usual crop checks still stand."
@@ -26,7 +26,7 @@ def view(slip: Slip, statements: Mapping[str, Statement], head: Head, book: Book
         subject=_subject(cards, book),
         day=say.day(head.day),
         answer=_answer(cards, slip, book),
-        before_looking=_before_looking(head, book) if cards else (),
+        before_looking=_before_looking(cards, head, book),
         cards=cards,
         keep_in_mind=tuple(_mind(line, statements, book) for line in slip.mind),
         silence=() if cards else tuple(_silence(slip, head)),
@@ -83,10 +83,14 @@ def _tasks(cards: Sequence[Card]) -> str:
     return say.capital(say.listed([f"{say.in_words(n)} {word}{'s' if n > 1 else ''}" for n, word in said if n]))
 
 
-def _before_looking(head: Head, book: Book) -> tuple[Sentence, ...]:
-    """General cautions, once, above the first ask."""
+def _before_looking(cards: Sequence[Card], head: Head, book: Book) -> tuple[Sentence, ...]:
+    """General cautions, once, above the first ask; and those of its own that a full card had no room for."""
+    if not cards:
+        return ()
     wanted = {"always", "warm"} if head.warm_half else {"always"}
-    return tuple(Sentence(each.text, f"caution:{each.id}") for each in book.cautions if wanted & {*each.when})
+    general = [Sentence(each.text, f"caution:{each.id}") for each in book.cautions if wanted & {*each.when}]
+    own = [(shown, each) for shown in cards for each in cautions_of(book.pests[shown.pest], book)]
+    return tuple(dict.fromkeys([*general, *(each for shown, each in own if each != shown.caution)]))
 
 
 def _before_acting(book: Book) -> Sentence:
@@ -100,18 +104,18 @@ def _before_acting(book: Book) -> Sentence:
 def _mind(line: Line, statements: Mapping[str, Statement], book: Book) -> Sentence:
     """One line, no card."""
     if not line.statements:
-        pest = book.pests[line.own["pest"]].plural
-        text = f"{say.capital(pest)}: you looked without a find; look again from {say.day(line.own['until'])}."
+        many = say.capital(book.pests[line.own["pest"]].plural)
+        text = f"{many}: you looked without a find; look again from {say.day(line.own['until'])}."
         return Sentence(text, "reader:own_look")
     statement = statements[line.statements[0]]
     pest = book.pests[statement.pest]
     if statement.wording == "count":
         counted = told(statement, "own", line.own["paddock"]).text
-        text = f"{say.capital(pest.plural)}: {counted} {verdict(statement, pest.relook_days.value).text}"
+        said = f"{counted} {verdict(statement, pest.relook_days.value).text}"
     else:
         text = told(statement, line.own["near"][0]).text
-        text = f"{say.capital(pest.plural)}: {text[:1].lower()}{text[1:]}"
-    return Sentence(text, origin(statement))
+        said = text[:1].lower() + text[1:]
+    return Sentence(f"{say.capital(pest.plural)}: {said}", origin(statement))
 
 
 def _silence(slip: Slip, head: Head) -> list[Sentence]:

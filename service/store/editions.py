@@ -280,22 +280,20 @@ def release(c: Connection, id: str, name: str | None = None) -> None:
 def set_canonical(c: Connection, id: str, hashes: Mapping[str, str]) -> None:
     """Keep the hash of what was rendered for each of some readers; done in pieces before signing."""
     _expect(get(c, id), "draft")
-    same = and_(slip.c.edition == id, slip.c.subscriber == bindparam("reader"))
-    rows = [{"reader": reader, "rendered": name} for reader, name in sorted(hashes.items())]
+    same = and_(slip.c.edition == id, slip.c.subscriber == bindparam("whose"))
+    rows = [{"whose": reader, "rendered": name} for reader, name in sorted(hashes.items())]
     if rows:
         c.execute(update(slip).where(same).values(canonical_hash=bindparam("rendered")), rows)
 
 
-def mark_signed(c: Connection, id: str, *, by: str, at: datetime, hashes: Mapping[str, str] | None = None) -> None:
+def mark_signed(c: Connection, id: str, *, by: str, at: datetime) -> None:
     """Freeze an edition: one short change. Every slip must have its canonical hash by then."""
-    found = get(c, id)
-    _expect(found, "draft")
+    _expect(get(c, id), "draft")
     without = select(func.count()).select_from(slip).where(slip.c.edition == id, slip.c.canonical_hash.is_(None))
     missing = c.execute(without).scalar_one()
     if missing:
         raise WrongState(f"edition {id} has {missing} digests that were not rendered yet; sign it again")
-    change = {"state": "signed", "signed_by": by, "signed_at": at, "hashes": {**found.hashes, **(hashes or {})}}
-    _flip(c, id, "draft", change)
+    _flip(c, id, "draft", {"state": "signed", "signed_by": by, "signed_at": at})
 
 
 def mark_sent(c: Connection, id: str, *, by: str, at: datetime) -> None:
