@@ -19,7 +19,8 @@ from service.errors import Refused
 
 _LINE = 78  # longest line that RFC 5322 section 2.1.1 asks for, without CRLF
 _HARD_LINE = 998  # longest that it allows
-_WORD_BYTES = 45  # UTF-8 bytes in one encoded word: 60 of base64, of the 75 characters allowed (RFC 2047)
+_LONGEST_NAME = len("Subject: ")  # of a header with free text: its first word must stand on the first line
+_WORD_BYTES = 42  # UTF-8 bytes in one encoded word, 68 characters with its frame: fits beside the longest name
 _PRINTABLE = bytes([*b"\t\r\n", *range(0x20, 0x7F)])
 _ATOMS = re.compile(r"[A-Za-z0-9!#$%&'*+/=?^_`{|}~ -]+")
 _ONE_TOKEN = re.compile(r"[!-~]+")
@@ -91,8 +92,9 @@ def _joined(parts: list[bytes], message_id: str) -> bytes:
     if len(parts) == 1:
         return parts[0]
     mark = _boundary(parts, message_id)
-    head = b'Content-Type: multipart/alternative; boundary="' + mark + b'"\r\n\r\n'
-    return head + b"".join(b"--" + mark + b"\r\n" + part for part in parts) + b"--" + mark + b"--\r\n"
+    head = b'Content-Type: multipart/alternative;\r\n boundary="' + mark + b'"\r\n\r\n'
+    # The line end before a delimiter belongs to the delimiter, so each part keeps its own.
+    return head + b"".join(b"--" + mark + b"\r\n" + part + b"\r\n" for part in parts) + b"--" + mark + b"--\r\n"
 
 
 def _linked(text: str, links: dict[str, str]) -> str:
@@ -139,7 +141,7 @@ def _boundary(parts: list[bytes], message_id: str) -> bytes:
 def _unstructured(name: str, text: str) -> str:
     """A header of free text: folded between words, or as encoded words (RFC 2047)."""
     text = _one_line(text)
-    plain = text.isascii() and "=?" not in text and all(len(word) < _LINE - 2 for word in text.split(" "))
+    plain = text.isascii() and "=?" not in text and all(len(word) <= _LINE - _LONGEST_NAME for word in text.split(" "))
     return _folded(name, text) if plain else _folded(name, _encoded_words(text))
 
 
