@@ -1,5 +1,6 @@
 """The only source of "now". Rehearsals and tests set it; nothing else reads the time of day."""
 
+import re
 from datetime import UTC, date, datetime, timedelta
 from typing import Protocol
 from zoneinfo import ZoneInfo
@@ -52,8 +53,11 @@ def iso_week(day: date) -> str:
 
 def week_days(week: str) -> tuple[date, date]:
     """Monday and Sunday of an ISO week written as 2026-W18."""
+    parts = re.fullmatch(r"(\d{4})-W(\d{2})", week, re.ASCII)
     try:
-        monday = datetime.strptime(week + "-1", "%G-W%V-%u").replace(tzinfo=UTC).date()
+        if parts is None:
+            raise ValueError(week)
+        monday = date.fromisocalendar(int(parts[1]), int(parts[2]), 1)
     except ValueError as error:
         raise ValueError(f"{week!r} is not an ISO week; write it as 2026-W18") from error
     return monday, monday + timedelta(days=6)

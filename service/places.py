@@ -7,7 +7,7 @@ ellipsoid they err by up to 0.56 %. Cells are H3 indexes held as signed 64-bit i
 
 from collections import defaultdict
 from collections.abc import Iterable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import h3.api.basic_int as h3
 import numpy as np
@@ -87,60 +87,69 @@ def place(
 class Blur:
     """Where each cell may be shown: at itself, at a coarser cell, or only as the district.
 
-    `shown` maps a rule-grid cell to the cell it is shown at; a cell it does not name is shown at
-    district size if `district_hides`, else not at all.
+    `shown` are the cells at which something is shown. What lies in none of them is shown at district size
+    if `district_hides`, else not at all.
     """
 
-    shown: Mapping[int, int]
+    shown: frozenset[int]
     district_hides: bool
 
     def public(self, cell: int) -> int | None:
         """The cell to compute every band, direction, dot and count from; None means district size or less."""
-        for step in range(GRID, COARSEST - 1, -1):
-            found = self.shown.get(parent(cell, step))
-            if found is not None:
-                return found
-        return None
+        above = (parent(cell, step) for step in range(GRID, COARSEST - 1, -1))
+        return next((found for found in above if found in self.shown), None)
 
 
 def blur(cells_by_holding: Mapping[str, Iterable[int]], k: int) -> Blur:
     """Work out the smallest cells that hide every holding among at least `k`.
 
-    The ladder is the stored cell's parents, resolution 7 to 3. A cell is shown on its own only where it
-    has k holdings *and* what is left of each coarser cell has none or k of its own: otherwise showing the
-    one would give away the rest by subtraction, so both are shown at the coarser cell.
+    The ladder is the stored cell's parents, resolution 7 to 3, then the district. What is shown at a cell is
+    what none of its shown parts holds, and that rest has to hide k holdings by itself: else whoever knows the
+    parts could take them away and be left with it. A rest of fewer is joined by the part that hides fewest.
     """
-    holdings: dict[int, set[str]] = defaultdict(set)
-    children: dict[int, set[int]] = defaultdict(set)
+    shown: dict[int, set[str]] = {}
+    level: dict[int, _Ground] = defaultdict(_Ground)
     for holding, cells in cells_by_holding.items():
         for cell in cells:
-            below = cell
-            holdings[cell].add(holding)
-            for step in range(GRID - 1, COARSEST - 1, -1):
-                above = parent(cell, step)
-                holdings[above].add(holding)
-                children[above].add(below)
-                below = above
-    shown: dict[int, int] = {}
-    for top in [cell for cell in holdings if resolution(cell) == COARSEST]:
-        _show(top, holdings, children, k, shown)
-    return Blur(shown, len(cells_by_holding) >= k)
+            level[cell].rest.add(holding)
+    for step in range(GRID, COARSEST, -1):
+        above: dict[int, _Ground] = defaultdict(_Ground)
+        for cell in sorted(level):
+            above[parent(cell, step - 1)].add(_settled(cell, level[cell], shown, k))
+        level = above
+    district = _Ground()
+    for cell in sorted(level):
+        district.add(_settled(cell, level[cell], shown, k))
+    _rest(district, shown, k)
+    return Blur(frozenset(shown), len(cells_by_holding) >= k)
 
 
-def _show(
-    cell: int,
-    holdings: Mapping[int, set[str]],
-    children: Mapping[int, set[int]],
-    k: int,
-    shown: dict[int, int],
-) -> None:
-    """Split a cell into its parts while every part, and every rest, still hides k holdings."""
-    if len(holdings[cell]) < k:
-        return
-    parts = sorted(children.get(cell, ()))
-    alone = [part for part in parts if len(holdings[part]) >= k]
-    rest = {name for part in parts if part not in alone for name in holdings[part]}
-    shown[cell] = cell
-    if not rest or len(rest) >= k:
-        for part in alone:
-            _show(part, holdings, children, k, shown)
+@dataclass(slots=True)
+class _Ground:
+    """What a cell holds: the holdings that are shown nowhere in it yet, and its topmost shown parts."""
+
+    rest: set[str] = field(default_factory=set)
+    parts: list[int] = field(default_factory=list)
+
+    def add(self, other: "_Ground") -> None:
+        self.rest |= other.rest
+        self.parts += other.parts
+
+
+def _settled(cell: int, ground: _Ground, shown: dict[int, set[str]], k: int) -> _Ground:
+    """The cell as the next coarser one sees it: one part, if something is shown at the cell."""
+    rest = _rest(ground, shown, k)
+    if rest is None:
+        return ground
+    shown[cell] = rest
+    return _Ground(parts=[cell])
+
+
+def _rest(ground: _Ground, shown: dict[int, set[str]], k: int) -> set[str] | None:
+    """The holdings shown at this size; None if there are none, or too few even with a part given up."""
+    if len(ground.rest) >= k:
+        return ground.rest
+    if not ground.rest or not ground.parts:
+        return None
+    fewest = min(ground.parts, key=lambda part: (len(shown[part]), part))
+    return ground.rest | shown.pop(fewest)

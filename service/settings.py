@@ -11,7 +11,7 @@ from pathlib import Path
 from typing import Any, Literal
 
 from pydantic import BaseModel, ConfigDict, Field, ValidationError
-from pydantic_settings import BaseSettings, PydanticBaseSettingsSource, SettingsConfigDict
+from pydantic_settings import BaseSettings, PydanticBaseSettingsSource, SettingsConfigDict, SettingsError
 
 from service.errors import BadSettings
 
@@ -93,7 +93,7 @@ def read(path: Path | None = None) -> Settings:
     if file.exists():
         try:
             values = tomllib.loads(file.read_text(encoding="utf-8"))
-        except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
+        except (tomllib.TOMLDecodeError, UnicodeDecodeError, OSError) as error:
             raise BadSettings(
                 f"{file} can't be read as TOML: {error}. Mend that line, or run: leafturn init"
             ) from error
@@ -101,6 +101,10 @@ def read(path: Path | None = None) -> Settings:
         raise BadSettings(f"there is no settings file {file}. Make one with: leafturn init {file}")
     try:
         return Settings(**values)
+    except SettingsError as error:
+        raise BadSettings(
+            f"the environment can't be used: {error}. Set one value of a group: LEAFTURN_STORE__URL"
+        ) from error
     except ValidationError as error:
         raise BadSettings(_in_words(error, file)) from error
 
@@ -112,18 +116,23 @@ def _in_words(error: ValidationError, file: Path) -> str:
         if problem["type"] == "extra_forbidden":
             lines.append(f"{name}: there is no such setting; remove it, or check its spelling")
         else:
-            lines.append(f"{name}: {problem['msg'].lower()} (given: {problem['input']!r})")
+            given = "" if name.endswith("password") else f" (given: {problem['input']!r})"
+            lines.append(f"{name}: {problem['msg'].lower()}{given}")
     return f"settings from {file} and the environment can't be used:\n  " + "\n  ".join(lines)
 
 
 def keys(settings: Settings) -> list[str]:
     """The keys that sign links, newest first; made on first use with mode 0600."""
     file = Path(settings.keys_file)
-    if not file.exists():
-        file.parent.mkdir(parents=True, exist_ok=True)
-        file.touch(mode=0o600)
-        file.write_text(secrets.token_urlsafe(48) + "\n", encoding="utf-8")
-    found = [line.strip() for line in file.read_text(encoding="utf-8").splitlines() if line.strip()]
+    try:
+        if not file.exists():
+            file.parent.mkdir(parents=True, exist_ok=True)
+            file.touch(mode=0o600)
+            file.write_text(secrets.token_urlsafe(48) + "\n", encoding="utf-8")
+        lines = file.read_text(encoding="utf-8").splitlines()
+    except (OSError, UnicodeDecodeError) as error:
+        raise BadSettings(f"keys_file can't be used: {error}. Name a file that this service may write") from error
+    found = [line.strip() for line in lines if line.strip()]
     if not found or any(len(key) < 32 for key in found):
         raise BadSettings(f"keys_file {file} needs a key of 32 characters or more on each line")
     return found
@@ -132,7 +141,10 @@ def keys(settings: Settings) -> list[str]:
 def mail_password(settings: Settings) -> str:
     """The mail server's password, from its file if one is named."""
     if settings.mail.password_file:
-        return Path(settings.mail.password_file).read_text(encoding="utf-8").strip()
+        try:
+            return Path(settings.mail.password_file).read_text(encoding="utf-8").strip()
+        except (OSError, UnicodeDecodeError) as error:
+            raise BadSettings(f"mail.password_file can't be read: {error}. Name a file that holds it") from error
     return settings.mail.password
 
 

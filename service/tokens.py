@@ -32,8 +32,9 @@ class Tokens:
 
     def read(self, purpose: str, token: str, at: datetime) -> str:
         """The subject of a token; BadToken where it is altered, expired, or made for something else."""
+        signer = self._signer(purpose)
         try:
-            subject, made = self._signer(purpose).loads(token)
+            subject, made = signer.loads(token)
             made_at = datetime.fromtimestamp(int(made), UTC)
         except (BadSignature, ValueError, TypeError, OverflowError) as error:
             raise BadToken(f"This link is not one of ours, or it was cut short on its way. {REMEDY}") from error
