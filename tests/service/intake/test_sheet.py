@@ -33,7 +33,7 @@ def _same(one: sheet.Sheet, other: sheet.Sheet) -> None:
 def test_regular_files_read_alike_both_ways(
     tmp_path_factory: pytest.TempPathFactory, rows: list[list[str]], end: str
 ) -> None:
-    text = end.join(",".join(row) for row in [HEADER, *rows]) + end
+    text = end.join(",".join(row) for row in [HEADER, *(["x", *row[1:]] for row in rows)]) + end
     quick = sheet._regular(text, HEADER)
     records = csv.reader(text.splitlines(keepends=True))
     next(records)
