@@ -14,9 +14,12 @@ from rules.digests import digest
 from rules.looks import derive
 from rules.records import CellDays, Holding, Known, Observation, Paddock, Station, StationDay
 from service.clock import local_day
+from service.known import season_from, spots_planned
 from service.places import cell_of, place
+from service.rulebook import load
 from tests.builders import LAT, LON, NOW, a_district, a_holding, a_paddock, a_person, a_postcode
 
+SPOTS_PLANNED = spots_planned(load())
 STATION = Station("st1", "north", "Buoy One", place(LAT + 0.1, LON, elevation_m=5.0))
 
 
@@ -29,7 +32,6 @@ def known(
     stations: Iterable[Station] = (STATION,),
     station_days: Iterable[StationDay] = (),
     weather: Callable[[Sequence[StationDay]], CellDays | None] | CellDays | None = None,
-    spots_planned: dict[str, int] | None = None,
     **changes: Any,
 ) -> Known:
     """What is knowable at `as_of` of the given rows; `weather` may be worked out from the days known then."""
@@ -42,9 +44,9 @@ def known(
         "district": district,
         "as_of": as_of,
         "today": today,
-        "season_from": season_opening(district.season_opens, today),
+        "season_from": season_from(district, today),
         "observations": tuple(sorted(rows, key=lambda row: row.key)),
-        "looks": tuple(derive(rows, spots_planned or {})),
+        "looks": tuple(derive(rows, SPOTS_PLANNED)),
         "postcodes": {"9001": a_postcode()},
         "holdings": {each.id: each for each in list(holdings) or [a_holding()]},
         "paddocks": {each.id: each for each in fields},
@@ -63,12 +65,6 @@ def newest(rows: Iterable[Any], as_of: datetime, key: Callable[[Any], Any]) -> l
         if row.knowable_from <= as_of:
             found[key(row)] = row
     return list(found.values())
-
-
-def season_opening(month_day: str, today: date) -> date:
-    """The newest season opening on or before a day."""
-    this_year = date.fromisoformat(f"{today.year}-{month_day}")
-    return this_year if this_year <= today else date.fromisoformat(f"{today.year - 1}-{month_day}")
 
 
 def a_station_day(

@@ -1,0 +1,156 @@
+"""A fresh count by spots, set against the number that matters for that crop, stage and unit.
+
+Only numbers with a source or of common practice are compared with; a count that can't be brought to the
+number's unit is not compared at all.
+"""
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from datetime import timedelta
+
+from rules import thresholds
+from rules.book import LIVE_MARKS, Pest, Rule, Threshold
+from rules.records import Ask, Evidence, Known, Observation, Paddock, Signal
+from rules.stages import crop_stage
+from service.signals.evidence import of_observation, of_paddock, signal
+
+
+@dataclass(frozen=True, slots=True)
+class Count:
+    """A row counted by spots, with the crop and stage it was made in and the row that told the stage."""
+
+    row: Observation
+    paddock: Paddock
+    crop: str
+    stage: int
+    stage_row: Observation
+
+
+def evaluate(known: Known, rule: Rule, pest: Pest) -> list[Signal]:
+    """At most one signal a paddock, from its newest count; paddocks by id."""
+    newest = _newest_counts(known, rule, pest)
+    counts = (_placed(known, newest[id], known.paddocks[id]) for id in sorted(newest))
+    found = (_signal(known, rule, pest, count) for count in counts if count and _at_risk(rule, pest, count))
+    return [each for each in found if each is not None]
+
+
+def _newest_counts(known: Known, rule: Rule, pest: Pest) -> dict[str, Observation]:
+    """The newest row of each paddock that was counted by spots, and surely this pest."""
+    oldest = known.today - timedelta(days=rule.parameters["count_within_days"])
+    rows = [
+        row
+        for row in known.observations
+        if row.pest == pest.id
+        and row.paddock in known.paddocks
+        and oldest <= row.day <= known.today
+        and row.spot_counts
+        and row.unit
+        and row.confidence != "unsure"
+    ]
+    return {str(row.paddock): row for row in sorted(rows, key=lambda row: (row.day, row.arrived_at, row.key))}
+
+
+def _placed(known: Known, row: Observation, paddock: Paddock) -> Count | None:
+    """The count with its crop and stage; None where either is unknown."""
+    crop = row.crop or paddock.crop
+    told = row if row.stage is not None else _stage_report(known, paddock, row)
+    if crop is None or told is None or told.stage is None:
+        return None
+    return Count(row, paddock, crop, told.stage, told)
+
+
+def _stage_report(known: Known, paddock: Paddock, row: Observation) -> Observation | None:
+    """The row that tells the stage on the day of the count, if one does."""
+    reports = [each for each in known.observations if crop_stage(paddock, [each], row.day).code is not None]
+    return max(reports, key=lambda each: (each.day, each.arrived_at, each.key), default=None)
+
+
+def _at_risk(rule: Rule, pest: Pest, count: Count) -> bool:
+    if rule.crops and count.crop not in rule.crops:
+        return False
+    return any(risk.crop == count.crop and risk.stage_from <= count.stage <= risk.stage_to for risk in pest.risks)
+
+
+def _number(pest: Pest, count: Count) -> tuple[Threshold, float] | None:
+    """The number to compare with, and what brings the count to its unit; the count's own unit goes first."""
+    row, paddock = count.row, count.paddock
+    live = [
+        each
+        for each in pest.thresholds
+        if each.mark in LIVE_MARKS and each.crop == count.crop and each.stage_from <= count.stage <= each.stage_to
+    ]
+    for each in sorted(live, key=lambda each: each.unit != row.unit):
+        try:
+            factor = thresholds.convert(
+                1.0,
+                str(row.unit),
+                each.unit,
+                plants_per_m2=row.plants_per_m2 or paddock.plants_per_m2,
+                row_spacing_m=row.row_spacing_m or paddock.row_spacing_m,
+            )
+        except thresholds.NotConvertible:
+            continue  # no sound way: that number says nothing about this count
+        return each, factor
+    return None
+
+
+def _units_per_spot(row: Observation) -> float | None:
+    """Units counted at each spot; None where neither they nor the units in all were given."""
+    if row.units_per_spot:
+        return row.units_per_spot
+    return row.units_sampled / len(row.spot_counts) if row.units_sampled else None
+
+
+def _signal(known: Known, rule: Rule, pest: Pest, count: Count) -> Signal | None:
+    """What the count says, unless it can't be compared or lies below."""
+    row, number, units = count.row, _number(pest, count), _units_per_spot(count.row)
+    if number is None or units is None:
+        return None
+    threshold, factor = number
+    counted = thresholds.spot_interval(row.spot_counts, units / factor, confidence=rule.parameters["confidence"])
+    if counted is None:
+        return None
+    said = thresholds.compare(
+        counted.mean, (counted.low, counted.high), threshold.low, threshold.high, spots=counted.spots
+    )
+    if said.verdict not in ("near", "at_or_above"):
+        return None
+    return signal(
+        known,
+        rule,
+        Ask.COUNT,
+        cells=[count.paddock.place.cell],
+        paddock=count.paddock.id,
+        first_day=row.day,
+        last_day=row.day + timedelta(days=rule.parameters["count_within_days"]),
+        figures={
+            "day": row.day.isoformat(),
+            "mean": round(counted.mean, 2),
+            "low": round(counted.low, 2),
+            "high": round(counted.high, 2),
+            "unit": threshold.unit,
+            "threshold_low": threshold.low,
+            "threshold_high": threshold.high,
+            "verdict": said.verdict,
+            "spots": counted.spots,
+            "more_spots": said.more_spots,
+            "crop": count.crop,
+            "stage": count.stage,
+            "mark": threshold.mark,
+            "source": threshold.source,
+            "edge_mean": _mean_at(row, "edge", units / factor),
+            "middle_mean": _mean_at(row, "middle", units / factor),
+        },
+        evidence=_evidence(count),
+    )
+
+
+def _mean_at(row: Observation, where: str, units: float) -> float | None:
+    """The mean of the spots at the edge or in the middle, which differ; None where it was not said."""
+    counts = [each for each, at in zip(row.spot_counts, row.spot_at, strict=False) if at == where]
+    return round(sum(counts) / len(counts) / units, 2) if counts else None
+
+
+def _evidence(count: Count) -> Sequence[Evidence]:
+    rows = [count.row] if count.stage_row == count.row else [count.row, count.stage_row]
+    return [*(of_observation(row) for row in rows), of_paddock(count.paddock)]
