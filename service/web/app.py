@@ -64,6 +64,7 @@ class _Trouble:
 
 
 _LINK = "Open the newest digest in your mail and use the link there, or ask your grower group’s coordinator."
+_STILL = "If the newest digest’s link does not work either, ask your grower group’s coordinator."
 _TROUBLES = {
     403: _Trouble("Not open to you", "This address is not open to readers.", _LINK),
     404: _Trouble("There is no such page", "The address may have been cut short on its way to you.", _LINK),
@@ -165,7 +166,7 @@ def _ours(request: Request, error: Exception) -> Response:
     """Our own errors: a link that does not work, or a store that can't answer just now."""
     if isinstance(error, BadToken | NotFound):
         why = str(error) if isinstance(error, BadToken) else "What it led to is no longer kept here."
-        return _html(pages.trouble("This link does not work", why, _LINK), 404)
+        return _html(pages.trouble("This link does not work", why, _STILL), 404)
     if isinstance(error, Unreachable):
         _log.warning("a page could not be served: %s", error)
         return _trouble(503, {"Retry-After": "120"})
