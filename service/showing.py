@@ -42,7 +42,7 @@ def edition(store: Store, id: str, book: Book, known: Known) -> Outcome:
     for slip in slips:
         shown = view(slip, statements, record.head, book)
         mine = {each.origin.partition(":")[2]: each.text for each in sentences(shown) if each.origin in _origins(slip)}
-        touched.update(mine)
+        touched.update(mine.keys())
         says = mine | says
         for _, word, reason in _marks(slip, readers.get(slip.subscriber), record, known, render.render(shown)):
             marks[word, reason] += 1
