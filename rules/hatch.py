@@ -70,7 +70,7 @@ def first_day(
     days, number = len(tmean), tmean.dtype.type
     windows = (number(cool_at_most), min(cool_days, days + 1), number(rain_at_least), min(rain_within, days + 1))
     out = np.full(tmean.shape[1], -1, np.int32)
-    _run(kernels.first_day_block, kernels.first_day_blocks, tmean, rain, (min(start, days), *windows), out)
+    _run(kernels.first_day_block, kernels.first_day_blocks, tmean, rain, (min(start, days), *windows), (out,))
     return out
 
 
@@ -149,20 +149,15 @@ def rain_then_cool(
     tmean, rain = _checked(tmean, rain, start, rain_days=rain_days, cool_days=cool_days)
     days, cells = tmean.shape
     start, rain_days, cool_days = min(start, days), min(rain_days, days + 1), min(cool_days, days + 1)
-    below = tmean.dtype.type(cool_below)
-    out = np.full(cells, -1, np.int32)
-    if consecutive and not (rain_again or return_rain_day):
-        values = (start, _just_over(rain_more_than), rain_days, below, cool_days)
-        _run(kernels.rain_then_cool_block, kernels.rain_then_cool_blocks, tmean, rain, values, out)
-        return out
-    _refuse_impossible(tmean, rain)
-    limit = -_just_over(-cool_below * cool_days)
-    rain_day = np.full(cells, -1, np.int32)
-    for c in range(cells):
-        out[c], rain_day[c] = kernels.rain_then_cool_cell(
-            np.ascontiguousarray(tmean[:, c]), np.ascontiguousarray(rain[:, c]), start, _just_over(rain_more_than),
-            rain_days, below, limit, cool_days, consecutive, rain_again,
-        )  # fmt: skip
+    out, rain_day = np.full(cells, -1, np.int32), np.full(cells, -1, np.int32)
+    shape = (start, _just_over(rain_more_than), rain_days, tmean.dtype.type(cool_below))
+    if consecutive and not rain_again:
+        blocks = kernels.rain_then_cool_block, kernels.rain_then_cool_blocks
+        _run(*blocks, tmean, rain, (*shape, cool_days), (out, rain_day))
+    else:
+        _refuse_impossible(tmean, rain)
+        limit = -_just_over(-cool_below * cool_days)
+        kernels.rain_then_cool_cells(tmean, rain, *shape, limit, cool_days, consecutive, rain_again, out, rain_day)
     return (out, rain_day) if return_rain_day else out
 
 
@@ -249,13 +244,16 @@ def _read_only(array: Weather, kind: np.dtype[Any]) -> Weather:
     return view
 
 
-def _run(block: Any, blocks: Any, tmean: Weather, rain: Weather, values: tuple[Any, ...], out: Days) -> None:
-    """Fill `out` by blocks of cells, on all threads if there is more than one block."""
-    if out.size <= BLOCK:
-        bad = block(tmean, rain, 0, out.size, *values, out)
+def _run(
+    block: Any, blocks: Any, tmean: Weather, rain: Weather, values: tuple[Any, ...], out: tuple[Days, ...]
+) -> None:
+    """Fill the arrays of `out` by blocks of cells, on all threads if there is more than one block."""
+    cells = tmean.shape[1]
+    if cells <= BLOCK:
+        bad = block(tmean, rain, 0, cells, *values, *out)
     else:
         with _one_at_a_time:
-            bad = blocks(tmean, rain, *values, out)
+            bad = blocks(tmean, rain, *values, *out)
     if bad:
         _refuse_impossible(tmean, rain)
 

@@ -25,7 +25,7 @@ def _met_on(state: Any, out: Any) -> None:
 
 @kernel()
 def _rain_then_cool_step(
-    t: int, start: int, x: Any, y: Any, old: Any, state: Any, total: Any,
+    t: int, start: int, x: Any, y: Any, old: Any, state: Any, total: Any, rain_day: Any,
     rain_limit: float, rain_days: int, cool_below: Any, cool_days: int,
 ) -> int:  # fmt: skip
     """One day of `STEP` cells; `old` is the rain that leaves the window."""
@@ -37,7 +37,9 @@ def _rain_then_cool_step(
         was = state[c]
         total[c] += np.float64(y[c] if y[c] > zero else zero) - np.float64(old[c] if old[c] > zero else zero)
         unarmed = blocked if np.isnan(y[c]) else was
-        unarmed = again if (unarmed <= whole) & (total[c] > rain_limit) else unarmed
+        begins = (was >= UNARMED) & (unarmed <= whole) & (total[c] > rain_limit)
+        rain_day[c] = today if begins else rain_day[c]
+        unarmed = again if begins else unarmed
         armed = was if x[c] < cool_below else again
         armed = met if armed <= today else armed
         state[c] = unarmed if was >= UNARMED else (was if was < 0 else armed)
@@ -48,9 +50,9 @@ def _rain_then_cool_step(
 @kernel()
 def rain_then_cool_block(
     tmean: Any, rain: Any, low: int, high: int, start: int,
-    rain_limit: float, rain_days: int, cool_below: Any, cool_days: int, out: Any,
+    rain_limit: float, rain_days: int, cool_below: Any, cool_days: int, out: Any, rain_day: Any,
 ) -> int:  # fmt: skip
-    """Days on which a cool run after rain is complete, for the cells low:high."""
+    """Days on which a cool run after rain is complete, and rain days, for the cells low:high."""
     days, cells, bad = tmean.shape[0], high - low, 0
     state = np.full(cells, UNARMED + rain_days - 1, np.int32)
     total = np.zeros(cells)
@@ -63,7 +65,7 @@ def rain_then_cool_block(
             old = rain[t - rain_days, f:g] if t >= rain_days else dry[: g - f]
             bad |= _rain_then_cool_step(
                 t, start, tmean[t, f:g], rain[t, f:g], old, state[f - low : g - low], total[f - low : g - low],
-                rain_limit, rain_days, cool_below, cool_days,
+                rain_day[f:g], rain_limit, rain_days, cool_below, cool_days,
             )  # fmt: skip
     _met_on(state, out[low:high])
     return bad
@@ -71,13 +73,14 @@ def rain_then_cool_block(
 
 @kernel(parallel=True)
 def rain_then_cool_blocks(
-    tmean: Any, rain: Any, start: int, rain_limit: float, rain_days: int, cool_below: Any, cool_days: int, out: Any
-) -> int:
+    tmean: Any, rain: Any, start: int, rain_limit: float, rain_days: int,
+    cool_below: Any, cool_days: int, out: Any, rain_day: Any,
+) -> int:  # fmt: skip
     bad = np.zeros(-(-out.size // BLOCK), np.int64)
     for b in numba.prange(bad.size):
         low, high = b * BLOCK, min((b + 1) * BLOCK, out.size)
         bad[b] = rain_then_cool_block(
-            tmean, rain, low, high, start, rain_limit, rain_days, cool_below, cool_days, out
+            tmean, rain, low, high, start, rain_limit, rain_days, cool_below, cool_days, out, rain_day
         )  # fmt: skip
     return int(bad.max())
 
@@ -166,3 +169,16 @@ def rain_then_cool_cell(
         if broken and rain_again:
             rain_day = -1
     return -1, rain_day
+
+
+@kernel()
+def rain_then_cool_cells(
+    tmean: Any, rain: Any, start: int, rain_limit: float, rain_days: int, cool_below: Any, cool_limit: float,
+    cool_days: int, consecutive: bool, rain_again: bool, out: Any, rain_day: Any,
+) -> None:  # fmt: skip
+    """The modes that no block is written for, cell by cell."""
+    for c in range(out.size):
+        out[c], rain_day[c] = rain_then_cool_cell(
+            tmean[:, c], rain[:, c], start, rain_limit, rain_days, cool_below, cool_limit,
+            cool_days, consecutive, rain_again,
+        )  # fmt: skip
