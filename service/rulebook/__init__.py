@@ -174,9 +174,7 @@ def _parameters(kind: str, given: Mapping[str, Any]) -> dict[str, Any]:
     """Check a rule's parameters by the model of its kind; returns them as plain tables."""
     model = models.PARAMETERS.get(kind)
     if model is None:
-        form = given.get("form")
-        chosen = form.get("value") if isinstance(form, Mapping) else None
-        model = models.HATCH_FORMS.get(str(chosen), models.RainThenCool)
+        model = models.HATCH_FORMS[models.HatchForm.model_validate(dict(given)).form.value]
     return model.model_validate(dict(given)).model_dump()
 
 

@@ -166,6 +166,14 @@ Days = Annotated[int, Field(ge=1, le=60)]
 Share = Annotated[float, Field(gt=0, lt=1)]
 
 
+class HatchForm(Shape):
+    """Which of the two forms a hatch rule has; read first, since it says what else there must be."""
+
+    model_config = ConfigDict(extra="ignore")
+
+    form: Value[Literal["rain_then_cool", "first_day"]]
+
+
 class HatchSpan(Shape):
     """What both forms of the hatch rule have."""
 

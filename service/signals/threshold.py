@@ -7,6 +7,7 @@ number's unit is not compared at all.
 from collections.abc import Sequence
 from dataclasses import dataclass
 from datetime import timedelta
+from typing import Any
 
 from rules import thresholds
 from rules.book import LIVE_MARKS, Pest, Rule, Threshold
@@ -110,11 +111,11 @@ def _signal(known: Known, rule: Rule, pest: Pest, count: Count) -> Signal | None
     counted = thresholds.spot_interval(row.spot_counts, units / factor, confidence=rule.parameters["confidence"])
     if counted is None:
         return None
-    said = thresholds.compare(
-        counted.mean, (counted.low, counted.high), threshold.low, threshold.high, spots=counted.spots
-    )
+    interval = (counted.low, counted.high)
+    said = thresholds.compare(counted.mean, interval, threshold.low, threshold.high, spots=counted.spots)
     if said.verdict not in ("near", "at_or_above"):
         return None
+    apart = {f"{where}_mean": _mean_at(row, where, units / factor) for where in ("edge", "middle")}
     return signal(
         known,
         rule,
@@ -123,26 +124,30 @@ def _signal(known: Known, rule: Rule, pest: Pest, count: Count) -> Signal | None
         paddock=count.paddock.id,
         first_day=row.day,
         last_day=row.day + timedelta(days=rule.parameters["count_within_days"]),
-        figures={
-            "day": row.day.isoformat(),
-            "mean": round(counted.mean, 2),
-            "low": round(counted.low, 2),
-            "high": round(counted.high, 2),
-            "unit": threshold.unit,
-            "threshold_low": threshold.low,
-            "threshold_high": threshold.high,
-            "verdict": said.verdict,
-            "spots": counted.spots,
-            "more_spots": said.more_spots,
-            "crop": count.crop,
-            "stage": count.stage,
-            "mark": threshold.mark,
-            "source": threshold.source,
-            "edge_mean": _mean_at(row, "edge", units / factor),
-            "middle_mean": _mean_at(row, "middle", units / factor),
-        },
+        figures=_figures(count, threshold, counted, said) | apart,
         evidence=_evidence(count),
     )
+
+
+def _figures(
+    count: Count, threshold: Threshold, counted: thresholds.SpotMean, said: thresholds.Comparison
+) -> dict[str, Any]:
+    return {
+        "day": count.row.day.isoformat(),
+        "mean": round(counted.mean, 2),
+        "low": round(counted.low, 2),
+        "high": round(counted.high, 2),
+        "unit": threshold.unit,
+        "threshold_low": threshold.low,
+        "threshold_high": threshold.high,
+        "verdict": said.verdict,
+        "spots": counted.spots,
+        "more_spots": said.more_spots,
+        "crop": count.crop,
+        "stage": count.stage,
+        "mark": threshold.mark,
+        "source": threshold.source,
+    }
 
 
 def _mean_at(row: Observation, where: str, units: float) -> float | None:

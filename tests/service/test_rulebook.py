@@ -200,6 +200,8 @@ def test_every_promise_about_looking_has_its_caution() -> None:
         ("rules/hatch.toml", "value = 10\n", "value = 0\n", "rules 1, parameters, cool_days, value", "greater than"),
         ("rules/hatch.toml", "[rules.parameters.consecutive]\nvalue = true\n", "[rules.parameters.consecutive]\n",
          "rules 1, parameters, consecutive, value", "add it"),
+        ("rules/hatch.toml", 'value = "rain_then_cool"', 'value = "cool_then_rain"',
+         "rules 1, parameters, form, value", "'rain_then_cool' or 'first_day'"),
         ("rules/hatch.toml", 'value = "03-01"', 'value = "13-01"', "rules 1, parameters, scan_from, value", "03-01"),
         ("rules/hatch.toml", 'pest = "redlegged_earth_mite"', 'pest = "mite"', "rules 1, pest", "it has: cutworms"),
         ("rules/hatch.toml", 'status = "understudy"', 'status = "live"', "rules 2, parameters, rain_days", "memory"),
