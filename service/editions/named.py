@@ -20,7 +20,6 @@ from itertools import pairwise
 from service.editions.running_text import Word, one_line, words
 
 _ENDINGS = ("", "'s", "s", "s'")
-_SMALL = frozenset({"the", "of", "and", "a", "an", "at", "by", "on", "in"})
 _BEFORE_SHORT = frozenset({"paddock", "block", "field"})
 _UNIT_FOLLOWS = re.compile(
     r"\s?(?:km|m|ha|kilomet|hect|min|hours?|days?|weeks?|spots?|plants?|looks?|of|to|and|%|[.,:–-]\s?\d)"
@@ -70,7 +69,11 @@ class Names:
         if name.kind == "whole":
             return True
         if name.kind == "written":
-            return all(word.written[0].isupper() for word in mine if word.folded not in _SMALL)
+            return all(
+                word.written[0].isupper()
+                for word, own in zip(mine, words(name.written), strict=True)
+                if own.written[0].isupper()
+            )
         before, after = tokens[at - 1].folded if at else "", tokens[at + 1].folded if at + 1 < len(tokens) else ""
         if name.kind == "short":
             alone = not _UNIT_FOLLOWS.match(line, mine[0].end)
@@ -84,7 +87,7 @@ def _entries(name: str, found: Sequence[Word], everyday: frozenset[str]) -> Iter
     """The ways in which one name may stand in a text."""
     folded = tuple(word.folded for word in found)
     if len(folded) > 1:
-        common = all(word in everyday or word in _SMALL or len(word) <= 2 for word in folded)
+        common = all(word in everyday or len(word) <= 2 for word in folded)
         yield _Name(folded, name, "written" if common else "whole")
         last = found[-1]
         if len(last.written) >= 4 and last.folded not in everyday and last.written[0].isupper():

@@ -7,7 +7,20 @@ from service.editions.render import render
 from service.errors import UnsafeText
 from tests.service.editions.views import a_view, said
 
-NAMES = ["Bob Gallagher", "Quandong", "Kelp Reach Pastoral", "Home", "Top", "12", "A", "I", "Jo", "Wheat Block", "🌾🌾"]
+NAMES = [
+    "Bob Gallagher",
+    "Quandong",
+    "Kelp Reach Pastoral",
+    "Home",
+    "Top",
+    "12",
+    "A",
+    "I",
+    "Jo",
+    "Wheat Block",
+    "Holding h3",
+    "🌾🌾",
+]
 
 
 def words(
@@ -136,6 +149,7 @@ def test_what_may_be_sent_is_let_by(text: str) -> None:
         ("in paddock 12, edges", ["12"]),
         ("in paddock A", ["A"]),
         ("in the Wheat Block", ["Wheat Block"]),
+        ("on Holding h3", ["Holding h3"]),
         ("in 🌾🌾 today", ["🌾🌾"]),
     ],
 )
@@ -149,7 +163,7 @@ def test_names_are_marked_where_they_are_names(text: str, marked: list[str]) -> 
         "Stay at home; the top of the hill; Top marks to all. Home again.",
         "A paddock 12 km away, a paddock I walked, 12 looks, paddock 12 of 30.",
         "A look in a paddock. I say so. Jo-ey was there.",
-        "A wheat block of ours; quandongs are a fruit.",
+        "We are holding h3 back. A wheat block of ours; quandongs are a fruit.",
         "Kelp on the reach; a reachable pastoral lease.",
         "Gallagherson is another.",
     ],
