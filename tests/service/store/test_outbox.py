@@ -6,13 +6,15 @@ from datetime import datetime, timedelta
 from typing import Any
 
 import pytest
-from sqlalchemy import insert, select, text
+from sqlalchemy import select, text
 
+from rules.slip import Edition
 from service.store import editions, leases, outbox
 from service.store.base import Store, micros
 from service.store.leases import Job, Result
 from tests.builders import NOW
 from tests.service.delivery.outgoing import a_message, history, put, states
+from tests.service.editions import cast
 
 LEASE_S = 600.0
 LATER = NOW + timedelta(seconds=LEASE_S)
@@ -40,9 +42,12 @@ def record(store: Store, job: Job, state: str, now: datetime = NOW, **values: An
 
 
 def an_edition(store: Store, id: str, state: str) -> None:
-    values = {"id": id, "district": "north", "week": "2026-W20", "state": state, "as_of": NOW, "note": ""}
+    """An edition without readers, signed, and sent if that is asked for."""
     with store.writing() as c:
-        c.execute(insert(editions.edition).values(drafted_at=NOW, drafted_by="ivy", hashes={}, **values))
+        editions.save_draft(c, Edition(id, "north", "2026-W20", NOW, NOW, "ivy", cast.HEAD), [], [], [])
+        editions.mark_signed(c, id, by="ivy", at=NOW)
+        if state == "sent":
+            editions.mark_sent(c, id, by="ivy", at=NOW)
 
 
 def test_a_message_is_written_once_whatever_happens(store: Store) -> None:
