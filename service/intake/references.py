@@ -3,15 +3,18 @@
 Ids are unique over all districts, so that a row of one district can't take over another's.
 """
 
-from collections.abc import Callable, Mapping
+from collections import defaultdict
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from datetime import date, datetime
-from typing import Any
+from typing import Any, TypeVar
 
 from rules.records import District, Holding, Paddock, Person, Place, Postcode, Station, Subscriber
 from service.places import distance_km
 from service.rows import Row, nearest
 from service.store import network, weather
+
+T = TypeVar("T")
 
 FARTHEST_KM = 1000.0  # no district is that wide; a swapped or unsigned coordinate lies farther off
 
@@ -27,6 +30,8 @@ class Network:
     people: Mapping[str, Person]
     subscribers: Mapping[str, Subscriber]
     stations: Mapping[str, Station]
+    readers_of: Mapping[str, Sequence[Subscriber]]  # by the paddock they have as their own
+    left: Mapping[str, frozenset[str]]  # by address in lower case: the ids of readers who left
 
 
 def load(c: Any, as_of: datetime) -> Network:
@@ -36,15 +41,30 @@ def load(c: Any, as_of: datetime) -> Network:
     def each(read: Callable[..., list[Any]], *options: Any) -> dict[str, Any]:
         return {key_of(record): record for district in districts for record in read(c, district, *options)}
 
+    subscribers = each(network.subscribers, None)
     return Network(
         districts=districts,
         postcodes=each(network.postcodes),
         holdings=each(network.holdings, date.max),
         paddocks=each(network.paddocks, as_of),
         people=each(network.people),
-        subscribers=each(network.subscribers, None),
+        subscribers=subscribers,
         stations=each(weather.stations),
+        readers_of=_grouped((id, reader) for reader in subscribers.values() for id in reader.paddocks),
+        left={
+            address: frozenset(ids)
+            for address, ids in _grouped(
+                (reader.email.casefold(), reader.id) for reader in subscribers.values() if reader.state == "left"
+            ).items()
+        },
     )
+
+
+def _grouped(pairs: Iterable[tuple[str, T]]) -> dict[str, list[T]]:
+    groups: dict[str, list[T]] = defaultdict(list)
+    for key, value in pairs:
+        groups[key].append(value)
+    return dict(groups)
 
 
 def key_of(record: Any) -> str:
@@ -80,11 +100,7 @@ def _near(row: Row, place: Place, district: District) -> None:
 def _paddock(row: Row, record: Paddock, known: Network) -> None:
     if not _there(row, "holding", record.holding, known.holdings, record.district, "holdings"):
         return
-    others = [
-        reader.id
-        for reader in known.subscribers.values()
-        if record.id in reader.paddocks and reader.holding != record.holding
-    ]
+    others = [reader.id for reader in known.readers_of.get(record.id, ()) if reader.holding != record.holding]
     if others:
         row.refuse(
             "holding",
@@ -95,8 +111,7 @@ def _paddock(row: Row, record: Paddock, known: Network) -> None:
 
 def _subscriber(row: Row, record: Subscriber, known: Network) -> None:
     if f"{record.district} {record.postcode}" not in known.postcodes:
-        codes = [postcode.code for postcode in known.postcodes.values() if postcode.district == record.district]
-        row.refuse("postcode", f"is no postcode of this district{nearest(record.postcode, codes)}; take it first")
+        row.refuse("postcode", "is no postcode of this district; take the postcodes file first")
     _there(row, "holding", record.holding, known.holdings, record.district, "holdings")
     _there(row, "person", record.person, known.people, record.district, "people")
     for id in record.paddocks:
@@ -110,19 +125,15 @@ def _subscriber(row: Row, record: Subscriber, known: Network) -> None:
 
 def _not_left(row: Row, record: Subscriber, known: Network) -> None:
     """An address that asked to be left alone does not come back under another id."""
-    address = record.email.casefold()
-    for other in known.subscribers.values():
-        if other.id != record.id and other.state == "left" and other.email.casefold() == address:
-            row.refuse("email", "has left the digest, and only its owner can come back; take this row out")
-            return
+    if known.left.get(record.email.casefold(), frozenset()) - {record.id}:
+        row.refuse("email", "has left the digest, and only its owner can come back; take this row out")
 
 
 def _there(row: Row, name: str, id: str | None, known: Mapping[str, Any], district: str, file: str) -> bool:
     """Whether a reference, if there is one, leads to a record of the same district."""
     if id is None or (id in known and known[id].district == district):
         return True
-    hint = nearest(id, sorted(key for key, record in known.items() if record.district == district))
-    row.refuse(name, f"is not known in this district{hint}; take the {file} file first")
+    row.refuse(name, f"is not known in this district; take the {file} file first")
     return False
 
 

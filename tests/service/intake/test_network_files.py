@@ -228,7 +228,7 @@ def test_what_a_row_refers_to_must_be_there(desk: Desk) -> None:
         desk, POSTCODES.replace("north,9001", "nroth,9001"), "district", "(did you mean north?); take the district file"
     )
     one(desk, PADDOCKS.replace("p2,h2", "p2,h3"), "holding", "take the holdings file first")
-    one(desk, PADDOCKS.replace("p2,h2", "p2,h9"), "holding", "not known in this district")
+    one(desk, PADDOCKS.replace("p2,h2", "p2,h9"), "holding", "not known in this district; take")
     desk.take(PADDOCKS)
     one(desk, SUBSCRIBERS.replace("Ann,9001", "Ann,9002"), "postcode", "no postcode of this district")
     one(desk, SUBSCRIBERS.replace(",tom\n", ",far\n"), "person", "take the people file first")
