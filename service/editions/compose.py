@@ -14,8 +14,8 @@ from rules.book import Book, Pest
 from rules.records import Ask, Known, Signal, Subscriber
 from rules.slip import Line, Slip, Statement
 from service.editions import effort, privacy, rank
-from service.editions.offers import Offer, joined, offers
-from service.editions.privacy import DISTRICT, OWN, Near, Vantage, View
+from service.editions.offers import Offer, joined, offers, told_crops
+from service.editions.privacy import DISTRICT, OWN, Counts, Near, View
 from service.editions.quiet import quiet_until
 from service.editions.rank import Bundle, Candidate
 from service.editions.stands import Stages, Stand, any_stage, at_risk, stands
@@ -56,8 +56,8 @@ def compose(
     held: frozenset[str] = frozenset(),
 ) -> Composed:
     """Statements and slips of one district's week. Held statements are kept, but no slip refers to them."""
-    seen = privacy.view(known)
-    offered = offers(signals, known, seen)
+    seen = privacy.view(known, told_crops(signals, known, book))
+    offered = offers(signals, known, book, seen)
     counted = effort.statements(known, book.pests) if seen.shown else []
     statements = joined([offer.statement for offer in offered] + counted)
     said = [offer for offer in offered if offer.statement.hash not in held]
@@ -80,25 +80,27 @@ class Seat:
 
     reader: Subscriber
     cells: frozenset[int]
-    here: Vantage
     near: Mapping[int, Near]
     stands: Sequence[Stand]
+    counts: Mapping[str, Counts]  # round the reader, for each pest that may matter to their crops at some stage
+
+
+def _seat(reader: Subscriber, scene: Scene) -> Seat:
+    here = privacy.vantage(reader, scene.known)
+    near = here.near(scene.spots)
+    crops = stands(reader, scene.known, scene.stages)
+    names = {stand.crop for stand in crops}
+    pests = sorted(id for id, pest in scene.book.pests.items() if any(risk.crop in names for risk in pest.risks))
+    counts = {pest: privacy.counts(scene.seen, pest, reader, here, near) for pest in pests}
+    return Seat(reader, privacy.own_cells(reader, scene.known), near, crops, counts)
 
 
 def _slip(reader: Subscriber, scene: Scene) -> Slip:
-    known = scene.known
-    here = privacy.vantage(reader, known)
-    seat = Seat(
-        reader,
-        privacy.own_cells(reader, known),
-        here,
-        here.near(scene.spots),
-        stands(reader, known, scene.stages),
-    )
+    seat = _seat(reader, scene)
     candidates = [found for offer in scene.offers if (found := _candidate(offer, seat))]
     awake, resting = _at_risk(candidates, seat, scene)
     stirring = [each for each in candidates if _stirs(each, awake[each.pest])]
-    bundles = rank.merge(stirring, awake, known.today)
+    bundles = rank.merge(stirring, awake, scene.known.today)
     asks, mind = rank.choose(bundles, {id: pest.minutes.value for id, pest in scene.book.pests.items()})
     kept = [_mind(bundle, scene) for bundle in mind] + [_resting(pest, day) for pest, day in resting.items()]
     return Slip(
@@ -179,7 +181,7 @@ def _ask(bundle: Bundle, seat: Seat, scene: Scene) -> Line:
     chosen = _best(bundle, scene)
     counted = chosen[0].paddock
     stands = sorted(bundle.stands, key=lambda stand: counted is not None and stand.paddock != counted)
-    found = privacy.counts(scene.seen, bundle.pest, seat.reader, seat.here, seat.near)
+    found = seat.counts[bundle.pest]
     own = _stand_values(stands)
     own["minutes"] = scene.book.pests[bundle.pest].minutes.value
     own["near"] = [_near_value(each.near) for each in chosen]
@@ -235,10 +237,9 @@ def _resting(pest: str, until: date) -> Line:
 def _around(seat: Seat, scene: Scene) -> list[Line]:
     """What others found, for the pests of the reader's crops; finds near first."""
     lines = []
-    for pest in _pests(seat, scene):
+    for pest, found in seat.counts.items():
         said = scene.counted.get(pest, ())
         if said and said[0].wording == "looks":
-            found = privacy.counts(scene.seen, pest, seat.reader, seat.here, seat.near)
             rank_by = (-found.near_finds, -found.near_looks, pest)
             own = {"found": [found.near_finds, found.near_looks]}
             lines.append((rank_by, Line(tuple(each.hash for each in said), own)))
@@ -247,20 +248,13 @@ def _around(seat: Seat, scene: Scene) -> list[Line]:
 
 def _own(seat: Seat, scene: Scene) -> dict[str, Any]:
     """What the reader is told where nothing is asked: how much looking stands behind the silence."""
-    pests = _pests(seat, scene)
-    found = [privacy.counts(scene.seen, pest, seat.reader, seat.here, seat.near) for pest in pests]
+    found = seat.counts.values()
     own: dict[str, Any] = {
-        "looks": privacy.visits_near(scene.seen, pests, seat.reader, seat.here, seat.near),
+        "looks": sum(each.near_looks for each in found),
         "finds": sum(each.near_finds for each in found),
     }
     if not scene.seen.shown:
         own["hidden"] = True
-    elif unlooked := [pest for pest, each in zip(pests, found, strict=True) if not each.looks]:
+    elif unlooked := [pest for pest, each in seat.counts.items() if not each.looks]:
         own["unlooked"] = unlooked[:MOST_AROUND]
     return own
-
-
-def _pests(seat: Seat, scene: Scene) -> list[str]:
-    """The pests that may matter to the reader's crops at some stage."""
-    crops = {stand.crop for stand in seat.stands}
-    return sorted(id for id, pest in scene.book.pests.items() if any(risk.crop in crops for risk in pest.risks))

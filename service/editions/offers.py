@@ -5,10 +5,11 @@ from dataclasses import dataclass
 from datetime import date
 from typing import Any
 
+from rules.book import LIVE_MARKS, Book, Pest
 from rules.digests import plain
 from rules.records import Ask, Known, Signal
 from rules.slip import Basis, Statement, statement_hash
-from service.editions.privacy import View
+from service.editions.privacy import Crops, View, farms_of
 
 HAPPENED = {"hatch": "met_day", "threshold": "day", "first_seen": "day"}  # the figure that says when
 
@@ -25,36 +26,67 @@ class Offer:
     finders: frozenset[str] = frozenset()
 
 
-def offers(signals: Sequence[Signal], known: Known, seen: View) -> list[Offer]:
+def told_crops(signals: Sequence[Signal], known: Known, book: Book) -> dict[str, Crops]:
+    """Rows of which a statement to others lets guess the crop: a count is compared only in crops with a number.
+
+    Where the growers of those crops can't hide each other, nothing is said to others, and nothing is told.
+    """
+    farms = farms_of(known)
+    found: dict[str, Crops] = {}
+    for signal in signals:
+        if signal.kind == "threshold":
+            crops = with_number(book.pests[signal.pest])
+            if farms.blur(crops).district_hides:
+                found |= dict.fromkeys(_counted(signal, known), crops)
+    return found
+
+
+def with_number(pest: Pest) -> Crops:
+    """The crops in which a count of a pest has a number to be compared with."""
+    return frozenset(each.crop for each in pest.thresholds if each.mark in LIVE_MARKS)
+
+
+def _counted(signal: Signal, known: Known) -> list[str]:
+    keys, day = {row.id for row in signal.evidence}, date.fromisoformat(signal.figures["day"])
+    return [row.key for row in known.observations if row.key in keys and row.pest == signal.pest and row.day == day]
+
+
+def offers(signals: Sequence[Signal], known: Known, book: Book, seen: View) -> list[Offer]:
     """All that may be said; nothing of anyone's rows but their public cell, save to themselves."""
-    return [offer for signal in signals for offer in _offers(signal, known, seen)]
+    return [offer for signal in signals for offer in _offers(signal, known, book, seen)]
 
 
-def _offers(signal: Signal, known: Known, seen: View) -> Iterator[Offer]:
-    """What a signal lets an edition say, and to whom. Nothing of others' rows but its public cell."""
-    day = date.fromisoformat(str(plain(signal.figures)[HAPPENED[signal.kind]]))
+def _offers(signal: Signal, known: Known, book: Book, seen: View) -> Iterator[Offer]:
+    """What one signal lets an edition say, and to whom."""
+    day = date.fromisoformat(signal.figures[HAPPENED[signal.kind]])
     if signal.kind == "hatch":
         yield Offer(_statement(signal, "hatch", signal.figures), day, frozenset(signal.cells))
     elif signal.kind == "threshold":
         exact = {**signal.figures, "paddock": signal.paddock}
         yield Offer(_statement(signal, "count", exact), day, paddock=signal.paddock)
-        if seen.shown and signal.figures["mean"]:
-            # The same for every verdict: which number a count meets would tell which crop it was in.
-            spot = seen.public(_cell(signal, known))
-            near = _statement(signal, "counted_near", {"spot": spot}, Ask.LOOK)
-            yield Offer(near, day, spot=spot, paddock=signal.paddock)
+        yield from _counted_near(signal, day, known, book, seen)
     elif seen.shown:
         yield _first_seen(signal, day, known, seen)
 
 
+def _counted_near(signal: Signal, day: date, known: Known, book: Book, seen: View) -> Iterator[Offer]:
+    """What others learn of a count: that there was one, and near which public cell; not how it turned out."""
+    crops = with_number(book.pests[signal.pest])
+    if seen.farms.blur(crops).district_hides and signal.figures["mean"]:
+        spot = seen.public(_cell(signal, known), crops)
+        near = _statement(signal, "counted_near", {"spot": spot}, Ask.LOOK)
+        yield Offer(near, day, spot=spot, paddock=signal.paddock)
+
+
 def _first_seen(signal: Signal, day: date, known: Known, seen: View) -> Offer:
-    """The season's first find, without its day, which could give away who was in the paddock."""
-    spot = seen.public(int(signal.figures["cell"]))
-    figures = {name: value for name, value in signal.figures.items() if name not in ("cell", "day")}
+    """The season's first find, without its day and whatever its crop, which could give away whose it was."""
     keys = {each.id for each in signal.evidence}
+    spot = seen.spot(sorted(keys), signal.figures["cell"])
+    figures = {name: value for name, value in signal.figures.items() if name not in ("cell", "day")}
     rows = [row for row in known.observations if row.key in keys and row.present and row.day == day]
     finders = frozenset(row.reporter for row in rows) | {row.paddock for row in rows if row.paddock}
-    return Offer(_statement(signal, "first_seen", {**figures, "spot": spot}), day, spot=spot, finders=finders)
+    said = _statement(signal, "first_seen", {**figures, "spot": spot}, Ask.LOOK)
+    return Offer(said, day, spot=spot, finders=finders)
 
 
 def _cell(signal: Signal, known: Known) -> int:

@@ -7,13 +7,13 @@ number of readers together learn no more than the cell. A reader's own rows stay
 
 from collections import defaultdict
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field, replace
 from datetime import date, timedelta
 
 import numpy as np
 import numpy.typing as npt
 
-from rules.records import Effort, Known, Look, Place, Subscriber
+from rules.records import Effort, Known, Look, Paddock, Place, Subscriber
 from service import places
 
 NEAR_KM = 20
@@ -34,7 +34,6 @@ class Near:
     own: bool = False
 
 
-Visit = tuple[str | int, str, date]
 DISTRICT = Near(None)
 OWN = Near(0, own=True)
 
@@ -56,14 +55,41 @@ class Tally:
     finds: int = 0
     looks: int = 0
     last_find: date | None = None
-    visits: frozenset[Visit] = frozenset()
+
+
+Crops = frozenset[str]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Farms:
+    """Who can hide whom: the paddocks of the holdings that were registered when the season opened."""
+
+    paddocks: Sequence[Paddock]
+    holdings: frozenset[str]
+    k: int
+    blurs: dict[Crops | None, places.Blur] = field(default_factory=dict)
+
+    def blur(self, crops: Crops | None = None) -> places.Blur:
+        """The blur among all holdings, or among those known to grow one of some crops."""
+        if crops not in self.blurs:
+            cells: dict[str, set[int]] = {id: set() for id in sorted(self.holdings)} if crops is None else {}
+            for paddock in self.paddocks:
+                if paddock.holding in self.holdings and (crops is None or paddock.crop in crops):
+                    cells.setdefault(paddock.holding, set()).add(paddock.place.cell)
+            self.blurs[crops] = places.blur(cells, self.k)
+        return self.blurs[crops]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class View:
-    """What one edition may show of its district's looks, and where."""
+    """What one edition may show of its district's looks, and where.
 
-    blur: places.Blur
+    `told` names the rows of which a statement lets readers guess the crop. They are hidden among the holdings
+    that grow such a crop: whoever drives past knows who grows what.
+    """
+
+    farms: Farms
+    told: Mapping[str, Crops]
     tallies: Mapping[str, Mapping[int | None, Tally]]  # by pest and public cell; None is district size
     by_reporter: Mapping[str, Sequence[Look]]
     by_paddock: Mapping[str, Sequence[Look]]
@@ -71,32 +97,37 @@ class View:
     @property
     def shown(self) -> bool:
         """Whether anything of others may be shown: the district holds enough holdings to hide each one."""
-        return self.blur.district_hides
+        return self.farms.blur().district_hides
 
-    def public(self, cell: int) -> int | None:
+    def public(self, cell: int, crops: Crops | None = None) -> int | None:
         """The public cell that says how near; None where only the district may be named."""
-        found = self.blur.public(cell) if self.shown else None
+        found = self.farms.blur(crops).public(cell) if self.shown else None
         return found if found is not None and places.resolution(found) in CELL_DOUBT_KM else None
 
+    def spot(self, rows: Iterable[str], cell: int) -> int | None:
+        """The public cell of some rows, whatever is told of them."""
+        return self.public(cell, next((self.told[key] for key in rows if key in self.told), None))
 
-def view(known: Known) -> View:
-    """Blur a district as its holdings stood when the season opened, and move its recent looks."""
-    cells: dict[str, set[int]] = {id: set() for id in known.holdings}
-    for paddock in known.paddocks.values():
-        if paddock.holding in cells:
-            cells[paddock.holding].add(paddock.place.cell)
+
+def farms_of(known: Known) -> Farms:
+    """The district's holdings as they stood when the season opened."""
+    return Farms(tuple(known.paddocks.values()), frozenset(known.holdings), known.district.holdings_to_hide)
+
+
+def view(known: Known, told: Mapping[str, Crops] | None = None) -> View:
+    """A district's recent looks, each moved to its public cell."""
+    bare = View(farms_of(known), told or {}, {}, {}, {})
     looks = recent(known, RECENT_DAYS)
-    bare = View(places.blur(cells, known.district.holdings_to_hide), {}, {}, {})
     groups: dict[str, dict[int | None, list[Look]]] = defaultdict(lambda: defaultdict(list))
     for look in looks:
-        groups[look.pest][bare.public(look.place.cell)].append(look)
+        groups[look.pest][bare.spot(look.rows, look.place.cell)].append(look)
     tallies = {pest: {spot: _tally(there) for spot, there in spots.items()} for pest, spots in groups.items()}
-    return View(bare.blur, tallies, _by("reporter", looks), _by("paddock", looks))
+    return replace(bare, tallies=tallies, by_reporter=_by("reporter", looks), by_paddock=_by("paddock", looks))
 
 
 def _tally(looks: Sequence[Look]) -> Tally:
     found = [look.day for look in looks if look.found]
-    return Tally(len(found), len(looks), max(found, default=None), frozenset(map(visit, looks)))
+    return Tally(len(found), len(looks), max(found, default=None))
 
 
 def _by(name: str, looks: Iterable[Look]) -> dict[str, list[Look]]:
@@ -105,11 +136,6 @@ def _by(name: str, looks: Iterable[Look]) -> dict[str, list[Look]]:
         if getattr(look, name) is not None:
             groups[getattr(look, name)].append(look)
     return groups
-
-
-def visit(look: Look) -> Visit:
-    """One visit, which may be looks for several pests."""
-    return look.paddock or look.place.cell, look.reporter, look.day
 
 
 def recent(known: Known, days: int, *, until: date | None = None) -> list[Look]:
@@ -189,7 +215,7 @@ def counts(seen: View, pest: str, reader: Subscriber, here: Vantage, near: Mappi
         return Counts(_finds(close), len(close), _finds(own), len(own))
     spots = seen.tallies.get(pest, {})
     there = [tally for spot, tally in spots.items() if is_near(spot, near)]
-    moved = [look for look in own if is_near(seen.public(look.place.cell), near)]
+    moved = [look for look in own if is_near(seen.spot(look.rows, look.place.cell), near)]
     return Counts(
         sum(tally.finds for tally in there) - _finds(moved) + _finds(close),
         sum(tally.looks for tally in there) - len(moved) + len(close),
@@ -204,18 +230,6 @@ def last_find_near(seen: View, pest: str, reader: Subscriber, near: Mapping[int,
     days = [tally.last_find for spot, tally in others.items() if is_near(spot, near)]
     days += [look.day for look in own_looks(seen, reader, pest) if look.found]
     return max((day for day in days if day is not None), default=None)
-
-
-def visits_near(seen: View, pests: Iterable[str], reader: Subscriber, here: Vantage, near: Mapping[int, Near]) -> int:
-    """How many visits for any of the pests were made near the reader."""
-    pests = list(pests)
-    own = [look for look in own_looks(seen, reader) if look.pest in pests]
-    found = {visit(look) for look in own if here.within(look.place, NEAR_KM)}
-    for pest in pests if seen.shown else ():
-        for spot, tally in seen.tallies.get(pest, {}).items():
-            if is_near(spot, near):
-                found |= tally.visits
-    return len(found)
 
 
 def is_near(spot: int | None, near: Mapping[int, Near]) -> bool:

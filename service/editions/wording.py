@@ -23,7 +23,7 @@ def view(slip: Slip, statements: Mapping[str, Statement], head: Head, book: Book
     """One reader's digest in reading order."""
     cards = tuple(card(line, statements, book) for line in slip.asks)
     return SlipView(
-        subject=_subject(cards, book),
+        subject=_subject(cards, slip, book),
         day=say.day(head.day),
         answer=_answer(cards, slip, book),
         before_looking=_before_looking(cards, head, book),
@@ -52,9 +52,10 @@ def sentences(shown: SlipView) -> list[Sentence]:
 # --- the answer first ------------------------------------------------------------------------------
 
 
-def _subject(cards: Sequence[Card], book: Book) -> Sentence:
+def _subject(cards: Sequence[Card], slip: Slip, book: Book) -> Sentence:
     if not cards:
-        return Sentence("This week: no special look asked; your usual crop checks still stand", "fixed:no_ask")
+        known = "no special look asked" if _looked(slip) else "nobody looked within 20 km"
+        return Sentence(f"This week: {known}; your usual crop checks still stand", "reader:looks")
     asks = [f"{_verb(each)} {book.pests[each.pest].plural}" for each in cards]
     return Sentence(f"This week: {say.listed(asks)}, about {_minutes(cards)} minutes", "reader:asks")
 
@@ -71,9 +72,14 @@ def _answer(cards: Sequence[Card], slip: Slip, book: Book) -> Sentence:
     if cards:
         pests = ", then ".join(book.pests[each.pest].plural for each in cards)
         return Sentence(f"{_tasks(cards)}, about {_minutes(cards)} minutes: {pests}.", "reader:asks")
-    if slip.own["looks"] or slip.own.get("hidden"):
-        return Sentence(f"No special look this week. {USUAL}", "fixed:no_ask")
+    if _looked(slip):
+        return Sentence(f"No special look this week. {USUAL}", "reader:looks")
     return Sentence(f"Nobody looked within 20 km, so we can't point you to one pest this week. {USUAL}", "reader:looks")
+
+
+def _looked(slip: Slip) -> bool:
+    """Whether it is known that someone looked near the reader, or may not be said."""
+    return bool(slip.own["looks"] or slip.own.get("hidden"))
 
 
 def _tasks(cards: Sequence[Card]) -> str:

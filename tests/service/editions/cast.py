@@ -38,13 +38,13 @@ def farms() -> list[Holding]:
 
 
 def fields(**changes: dict[str, Any]) -> list[Paddock]:
-    """One paddock a farm, p0 to p7; changes by paddock."""
-    return [
-        a_paddock(
-            f"p{i}", **({"holding": f"h{i}", "name": f"Kelp {i}", "place": at(*where)} | changes.get(f"p{i}", {}))
-        )
-        for i, where in enumerate(FARMS)
-    ]
+    """One paddock of canola a farm, p0 to p7; changes by paddock."""
+    return [_field(i, changes.get(f"p{i}", {})) for i in range(len(FARMS))]
+
+
+def _field(i: int, changes: dict[str, Any]) -> Paddock:
+    values = {"holding": f"h{i}", "name": f"Kelp {i}", "place": at(*FARMS[i]), "crop": "canola"}
+    return a_paddock(f"p{i}", **(values | changes))
 
 
 def look(i: int, present: bool, *, ago: int = 2, pest: str = MITE, **changes: Any) -> Observation:
@@ -68,7 +68,7 @@ def look(i: int, present: bool, *, ago: int = 2, pest: str = MITE, **changes: An
 def district(rows: Iterable[Observation] = (), **changes: Any) -> Known:
     """The district as known on Tuesday 12 May 2026."""
     values: dict[str, Any] = {"observations": rows, "paddocks": fields(), "holdings": farms()} | changes
-    return known(spots_planned=dict.fromkeys(BOOK.pests, 5), **values)
+    return known(**values)
 
 
 def reader(id: str = "s1", **changes: Any) -> Subscriber:

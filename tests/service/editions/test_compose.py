@@ -72,7 +72,8 @@ def test_a_first_find_far_off_is_kept_in_mind_and_near_is_asked() -> None:
 
 def test_a_pest_that_no_crop_of_the_readers_minds_is_not_mentioned() -> None:
     row = cast.look(1, True, pest=CUTWORM)  # the catalogue names no risk in pasture
-    slip = cast.slip([row], [cast.first_seen(row)], readers=[cast.reader(crops=("pasture",))])
+    fields = cast.fields(p0={"crop": "pasture"})
+    slip = cast.slip([row], [cast.first_seen(row)], paddocks=fields, readers=[cast.reader(crops=("pasture",))])
     assert (slip.asks, slip.mind, slip.around) == ((), (), ())
 
 
@@ -92,6 +93,13 @@ def test_a_pest_that_no_crop_of_the_readers_minds_is_not_mentioned() -> None:
 def test_how_far_a_crop_is_known_to_be_grown(paddock: dict[str, Any], expected: str) -> None:
     slip = cast.slip(signals=[cast.hatch()], paddocks=cast.fields(p0=paddock), readers=[cast.reader(crops=())])
     assert slip.asks[0].own["at"] == expected
+
+
+def test_a_paddock_whose_crop_nobody_entered_has_the_one_reported() -> None:
+    fields = cast.fields(p0={"crop": None})
+    reported = cast.look(0, True, crop="lentil", ago=9)
+    slip = cast.slip([reported], [cast.hatch()], paddocks=fields, readers=[cast.reader(crops=())])
+    assert slip.asks[0].own["crop"] == "lentil"
 
 
 def test_a_reported_stage_counts_for_fourteen_days() -> None:

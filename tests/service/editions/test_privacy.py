@@ -2,7 +2,7 @@
 
 import random
 from collections.abc import Iterable
-from datetime import timedelta
+from datetime import date
 
 import pytest
 
@@ -11,7 +11,7 @@ from service import places
 from service.editions import privacy
 from service.editions.compose import compose
 from service.editions.privacy import Near
-from tests.builders import LAT, LON, TODAY, a_district, a_holding, a_paddock, a_postcode, an_observation
+from tests.builders import LAT, LON, a_district, a_holding, a_paddock, a_postcode, an_observation
 from tests.known import known
 from tests.service.editions import cast
 from tests.service.editions.plain import printed
@@ -55,20 +55,23 @@ def strangers(n: int = 50) -> tuple[list[Subscriber], dict]:
 READERS, CODES = strangers()
 
 
-def found_at(i: int) -> tuple[list[Observation], list[Signal]]:
-    """One find on farm i, counted there, the first of the season; and what the rules say of it."""
+def found_at(i: int, counted: bool) -> tuple[list[Observation], list[Signal]]:
+    """One find on farm i, the first of the season; and what the rules say of it.
+
+    A count has a number to be compared with in canola only, so elsewhere no rule speaks of it.
+    """
+    crop = farm_paddocks()[i].crop
     row = an_observation(
-        "csv:find", day=TODAY - timedelta(days=2), place=FARMS[i], paddock=f"f{i}", reporter=f"grower{i}"
+        "csv:find", day=date(2026, 5, 10), place=FARMS[i], paddock=f"f{i}", reporter=f"grower{i}", crop=crop
     )
-    counted = cast.threshold(0, paddock=f"f{i}", cells=(FARMS[i].cell,))
-    return [row], [cast.first_seen(row), counted]
+    count = [cast.threshold(0, rows=[row], paddock=f"f{i}", cells=(FARMS[i].cell,))] if counted else []
+    return [row], [cast.first_seen(row), *count]
 
 
-def what_strangers_read(i: int, hide: int = HIDE) -> tuple[str, ...]:
+def what_strangers_read(i: int, counted: bool, hide: int = HIDE) -> tuple[str, ...]:
     """All that fifty strangers are told of a find on farm i, put together."""
-    rows, signals = found_at(i)
-    here = a_known(rows, hide)
-    composed = compose(here, signals, cast.BOOK, READERS)
+    rows, signals = found_at(i, counted)
+    composed = compose(a_known(rows, hide), signals, cast.BOOK, READERS)
     return tuple(printed(cast.said(composed, reader.id)) for reader in READERS)
 
 
@@ -79,48 +82,71 @@ def a_known(rows: Iterable[Observation], hide: int = HIDE) -> Known:
         holdings=farm_holdings(),
         postcodes=CODES,
         district=a_district(holdings_to_hide=hide),
-        spots_planned={},
     )
 
 
+Reading = tuple[str, ...]
+
+
 @pytest.fixture(scope="module")
-def told() -> list[tuple[str, ...]]:
-    return [what_strangers_read(i) for i in range(HOLDINGS)]
+def told() -> dict[tuple[int, bool], Reading]:
+    """What the strangers read, by farm and whether its count was compared: all weeks that can have been."""
+    canola = [i for i, paddock in enumerate(farm_paddocks()) if paddock.crop == "canola"]
+    cases = [(i, False) for i in range(HOLDINGS)] + [(i, True) for i in canola]
+    return {case: what_strangers_read(*case) for case in cases}
 
 
-def test_fifty_strangers_together_can_not_tell_fewer_than_five_farms_apart(told: list[tuple[str, ...]]) -> None:
-    for i, reading in enumerate(told):
-        alike = [j for j in range(HOLDINGS) if told[j] == reading]
-        assert len(alike) >= HIDE, f"a find on farm {i} could only be on {alike}"
+def test_fifty_strangers_together_can_not_tell_fewer_than_five_farms_apart(
+    told: dict[tuple[int, bool], Reading],
+) -> None:
+    """The fifty know every farm and its crop; what they read together still fits five farms or more."""
+    for case, reading in told.items():
+        alike = {i for (i, _), other in told.items() if other == reading}
+        assert len(alike) >= HIDE, f"a find as in {case} could only be on {alike}"
 
 
-def test_strangers_are_told_something_all_the_same(told: list[tuple[str, ...]]) -> None:
+def test_strangers_are_told_something_all_the_same(told: dict[tuple[int, bool], Reading]) -> None:
     """The promise is not kept by saying nothing: some are asked to look, and at different distances."""
-    assert any("GO AND LOOK" in text for text in told[0])
-    assert len(set(told)) > 1
+    assert any("GO AND LOOK" in text for text in told[0, False])
+    assert any("Found and counted" in text or "found and counted" in text for text in told[0, True])
+    assert len(set(told.values())) > 2
 
 
 def test_without_hiding_the_strangers_would_know() -> None:
     """The same fifty, in a district that hides nobody: this reading does narrow, so the test above can fail."""
-    readings = [what_strangers_read(i, hide=1) for i in range(8)]
+    readings = [what_strangers_read(i, False, hide=1) for i in range(8)]
     assert all(readings.count(reading) < HIDE for reading in readings)
 
 
-def test_no_text_names_a_farm_a_paddock_or_a_reporter(told: list[tuple[str, ...]]) -> None:
-    texts = "\n".join(text for reading in told for text in reading)
+def test_no_text_names_a_farm_a_paddock_or_a_reporter(told: dict[tuple[int, bool], Reading]) -> None:
+    texts = "\n".join(text for reading in told.values() for text in reading)
     assert not any(name in texts for name in ("Wave", "Holding", "grower"))
 
 
 def test_a_statement_about_others_keeps_no_paddock_and_no_day() -> None:
-    rows, signals = found_at(0)
+    rows, signals = found_at(0, True)
     composed = compose(a_known(rows), signals, cast.BOOK, READERS)
     used = {name for slip in composed.slips.values() for line in (*slip.asks, *slip.mind) for name in line.statements}
+    assert {composed.statements[name].wording for name in used} <= {"first_seen", "counted_near"}
     assert used
     for name in used:
         figures = composed.statements[name].figures
         assert "paddock" not in figures
         assert "day" not in figures
         assert FARMS[0].cell not in figures.values()
+
+
+def test_a_count_is_hidden_among_those_who_grow_its_crop() -> None:
+    """With four growers of canola in the district, others hear nothing of a count in it; its owner does."""
+    four = [{"crop": "canola" if i < 4 else "lentil"} for i in range(8)]
+    fields = cast.fields(**{f"p{i}": crop for i, crop in enumerate(four)})
+    row = cast.look(0, True)
+    readers = [cast.reader("owner"), cast.reader("other", paddocks=("p1",), person="person1")]
+    composed = cast.edition([row], [cast.threshold(0, rows=[row])], readers, paddocks=fields)
+    assert composed.slips["owner"].asks
+    assert not composed.slips["other"].asks
+    five = cast.fields(**{f"p{i}": {"crop": "canola" if i < 5 else "lentil"} for i in range(8)})
+    assert cast.edition([row], [cast.threshold(0, rows=[row])], readers, paddocks=five).slips["other"].asks
 
 
 # --- the view -------------------------------------------------------------------------------------
