@@ -16,7 +16,7 @@ from itertools import pairwise
 from typing import Any
 
 from rules.slip import Rendered
-from service.editions.named import Names, anywhere
+from service.editions.named import Names, Phrases
 from service.editions.running_text import Word, one_line, paragraphs, without_tags, words
 from service.errors import UnsafeText
 from service.shipped import shipped
@@ -63,7 +63,7 @@ def check(texts: Mapping[str, str], names: Iterable[str], allowed: Iterable[str]
     ----------
     texts
         By where they stand. A text whose place ends in "html" is read without its tags; one whose place
-        begins with "note" may hold no markup, link, address or position either.
+        is "note", or ends in " note", may hold no markup, link, address or position either.
     names
         People, farms and paddocks that no reader may see named; the same frozenset for every digest of a
         run is indexed once.
@@ -82,8 +82,8 @@ def check(texts: Mapping[str, str], names: Iterable[str], allowed: Iterable[str]
     return list(marks)
 
 
-def _marks(where: str, text: str, named: Names, may: re.Pattern[str] | None) -> Iterator[Mark]:
-    note = where.startswith("note")
+def _marks(where: str, text: str, named: Names, may: Phrases) -> Iterator[Mark]:
+    note = where == "note" or where.endswith(" note")
     limit = NOTE_LIMIT if note else TEXT_LIMIT
     if len(text) > limit:
         yield where, text[:20] + "…", f"begins a text of {len(text):,} characters; it may have {limit:,}"
@@ -97,14 +97,11 @@ def _marks(where: str, text: str, named: Names, may: re.Pattern[str] | None) -> 
             yield where, line[begin:end], reason
 
 
-def _kept(found: Sequence[Found], line: str, may: re.Pattern[str] | None) -> Iterator[Found]:
+def _kept(found: Sequence[Found], line: str, may: Phrases) -> Iterator[Found]:
     """Marks in order, without those inside an allowed phrase or inside a longer mark of the same reason."""
-    if not found:
-        return
-    allowed = [hit.span() for hit in may.finditer(line)] if may else []
     for begin, end, why in sorted(found):
-        longer = [(a, b) for a, b, other in found if other == why and b - a > end - begin]
-        if not any(a <= begin and end <= b for a, b in [*allowed, *longer]):
+        longer = (other == why and b - a > end - begin and a <= begin and end <= b for a, b, other in found)
+        if not (any(longer) or may.cover(line, begin, end)):
             yield begin, end, why
 
 
@@ -149,8 +146,8 @@ def _names(names: frozenset[str]) -> Names:
 
 
 @lru_cache(maxsize=1024)
-def _allowed(phrases: frozenset[str]) -> re.Pattern[str] | None:
-    return anywhere(phrases)
+def _allowed(phrases: frozenset[str]) -> Phrases:
+    return Phrases(phrases)
 
 
 @cache

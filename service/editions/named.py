@@ -110,12 +110,24 @@ def _end(name: _Name, last: Word) -> int:
     return last.begin + min(len(name.folded[-1]), last.end - last.begin)
 
 
-def anywhere(phrases: Iterable[str]) -> re.Pattern[str] | None:
-    """One pattern for phrases that count wherever they stand as whole words, the longest first."""
-    tidy = sorted({one_line(phrase) for phrase in phrases} - {""}, key=lambda phrase: (-len(phrase), phrase))
-    return re.compile("|".join(map(_whole, tidy)), re.IGNORECASE) if tidy else None
+class Phrases:
+    """Phrases that count wherever they stand as whole words, in any case."""
+
+    def __init__(self, phrases: Iterable[str]) -> None:
+        self._phrases = sorted({one_line(phrase).lower() for phrase in phrases} - {""})
+
+    def cover(self, line: str, begin: int, end: int) -> bool:
+        """Whether one of them holds all of that span of the line."""
+        low = line.lower() if len(line.lower()) == len(line) else line
+        return any(_covers(phrase, low, begin, end) for phrase in self._phrases)
 
 
-def _whole(phrase: str) -> str:
-    before, after = r"(?<!\w)" if phrase[0].isalnum() else "", r"(?!\w)" if phrase[-1].isalnum() else ""
-    return f"{before}{re.escape(phrase)}{after}"
+def _covers(phrase: str, line: str, begin: int, end: int) -> bool:
+    at = line.find(phrase, max(0, end - len(phrase)))
+    while 0 <= at <= begin:
+        last = at + len(phrase)
+        parted = not (line[at - 1 : at].isalnum() and phrase[0].isalnum())
+        if parted and not (line[last : last + 1].isalnum() and phrase[-1].isalnum()):
+            return True
+        at = line.find(phrase, at + 1)
+    return False

@@ -72,7 +72,7 @@ class Renderer:
         )
 
     def page(self, view: SlipView) -> str:
-        """The same digest as a page, with what stands behind each card one tap away."""
+        """The same digest as a page, what stands behind each card one tap away; its way out is a placeholder."""
         return self._page.render(view=view)
 
 

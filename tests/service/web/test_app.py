@@ -12,6 +12,7 @@ import pytest
 from fastapi import FastAPI
 from fastapi.routing import APIRoute
 
+from rules.slip import UNSUBSCRIBE_LINK
 from service.errors import StoreBusy
 from service.store.base import Store
 from service.web import pages
@@ -193,7 +194,8 @@ def test_the_policy_names_the_one_style_sheet_of_every_page(site: Site) -> None:
         assert f"style-src 'sha256-{mark}'" in answer.headers["Content-Security-Policy"]
         assert "<script" not in answer.text
         assert " style=" not in answer.text
-        assert not re.search(r"(src|href|action)=", answer.text)
+        assert not re.search(r"(src|action)=", answer.text)
+        assert set(re.findall(r'href="([^"]*)"', answer.text)) <= {UNSUBSCRIBE_LINK}  # put in by the pipeline
 
 
 def test_the_log_drops_the_token(site: Site, caplog: pytest.LogCaptureFixture) -> None:
