@@ -42,6 +42,7 @@ def compare(
     threshold_high: float | None,
     *,
     spots: int | None = None,
+    confidence: float = 0.95,
 ) -> Comparison:
     """Set a mean count and its interval against a number that itself is in doubt.
 
@@ -55,6 +56,8 @@ def compare(
         The number that matters, from its lower to its upper doubt; None where none is agreed on.
     spots : int, optional
         Spots behind the interval; needed to say how many more.
+    confidence : float, default 0.95
+        Coverage of the interval. [1]
 
     Returns
     -------
@@ -84,7 +87,7 @@ def compare(
     margin = max(threshold_low - mean, mean - threshold_high)
     if spots is None or spots < 2 or margin <= 0:
         return Comparison("near")
-    return Comparison("near", more_spots(interval[1] - mean, margin, spots))
+    return Comparison("near", more_spots(interval[1] - mean, margin, spots, confidence=confidence))
 
 
 def convert(

@@ -42,6 +42,13 @@ def test_near_says_how_many_more_spots():
     assert compare(12, (12 - 2.48333, 12 + 2.48333), 8, 10, spots=5) == Comparison("near", 2)
 
 
+def test_a_lower_confidence_asks_for_fewer_spots():
+    # by hand, 80 %: 1.53321 x 2 / √5 = 1.37134; to come under 1.2: n = 6: 1.47588 x 2 / √6 = 1.20506;
+    # n = 7: 1.43976 x 2 / √7 = 1.08836, so two more
+    count = 6.8, (6.8 - 1.37134, 6.8 + 1.37134)
+    assert compare(*count, 8, 10, spots=5, confidence=0.8) == Comparison("near", 2)
+
+
 def test_inside_the_numbers_own_doubt_no_counting_settles_it():
     assert compare(9, (5, 13), 8, 10, spots=5) == Comparison("near", None)
 
