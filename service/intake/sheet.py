@@ -8,6 +8,7 @@ import io
 import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from itertools import islice
 from pathlib import Path
 
 import numpy as np
@@ -48,18 +49,19 @@ class Sheet:
 def read(path: Path) -> Sheet:
     """Read a file; BadInput where it is no table of observations."""
     text = rows.text_of(path)
-    records = _records(path, text)
-    header = [cell.strip().lower() for cell in next(records, [])]
+    quoted = '"' in text
+    first = text if quoted else text[: text.find("\n") + 1 or None]  # not a copy of everything for one line
+    header = [cell.strip().lower() for cell in next(_records(path, first), [])]
     _check_header(path, header)
-    sheet = _regular(text, header) or _irregular(records, header)
+    sheet = _irregular(path, text, header) if quoted else _regular(text, header) or _irregular(path, text, header)
     if not sheet.misfits and not any(pc.any(pc.not_equal(column, "")).as_py() for column in sheet.columns.columns):
         raise BadInput(f"{path.name} has a header and no rows; add at least one")
     return sheet
 
 
 def _regular(text: str, header: list[str]) -> Sheet | None:
-    """The quick way, for files whose every line is a row; None where that is not so."""
-    if '"' in text or "\r" in text.replace("\r\n", "\n"):
+    """The quick way, for files without quotation marks; None where some line is not a row."""
+    if "\r" in text and text.count("\r") != text.count("\r\n"):
         return None
     try:
         table = arrow_csv.read_csv(
@@ -75,12 +77,12 @@ def _regular(text: str, header: list[str]) -> Sheet | None:
     return Sheet(header, table, np.arange(2, table.num_rows + 2), [])
 
 
-def _irregular(records: Iterator[list[str]], header: list[str]) -> Sheet:
+def _irregular(path: Path, text: str, header: list[str]) -> Sheet:
     """The careful way, record by record."""
     fitting: list[list[str]] = []
     numbers: list[int] = []
     misfits: list[Misfit] = []
-    for number, cells in enumerate(records, start=2):
+    for number, cells in enumerate(islice(_records(path, text), 1, None), start=2):
         if len(cells) == len(header):
             fitting.append(cells)
             numbers.append(number)
