@@ -8,18 +8,19 @@ The command line, the pages and the demo call these and nothing below them. Only
 from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import replace
-from datetime import datetime
+from datetime import datetime, timedelta
 from functools import cache
 from pathlib import Path
 from typing import Any
 from zoneinfo import ZoneInfo
 
 from rules.book import Book
+from rules.digests import plain
 from rules.records import Known, Person, Signal
 from rules.slip import Edition
 from service import intake, mailing, rulebook, showing, signals, tracing, weather
 from service import settings as settings_file
-from service.clock import Clock, iso_week
+from service.clock import Clock, iso_week, local_day
 from service.delivery import smtp, worker
 from service.delivery.maildir_server import MaildirServer
 from service.editions.compose import Composed, compose
@@ -28,13 +29,14 @@ from service.intake.kinds import kind_of
 from service.intake.network_files import take_network
 from service.known import know
 from service.settings import Settings
-from service.store import audit, editions, health, network, outbox, rules, schema
+from service.store import audit, editions, health, jobs, network, outbox, rules, schema
 from service.store import signals as signal_store
 from service.store.base import Store
 from service.tokens import Tokens
 
 Outcome = dict[str, Any]
 Progress = Callable[[int, int | None, str], None] | None
+LONGEST_STEP = timedelta(minutes=10)  # a step that is not finished by then may be taken over
 SIGNERS = frozenset({"coordinator", "deputy"})
 
 
@@ -104,9 +106,11 @@ def run_rules(store: Store, district_id: str, *, clock: Clock, as_of: datetime |
     moment = clock.now()
     if as_of is not None:
         moment = as_of if as_of.tzinfo else as_of.replace(tzinfo=_zone(store, district_id))
-    _, _, found = _said(store, district_id, moment)
-    with store.writing() as c:
-        signal_store.save(c, found)
+    with _claimed(store, "rules", district_id, clock) as done:
+        _, _, found = _said(store, district_id, moment)
+        with store.writing() as c:
+            signal_store.save(c, found)
+        done["signals"] = len(found)
     return {"district": district_id, "as_of": moment, "signals": [showing.signal_line(each) for each in found]}
 
 
@@ -115,7 +119,12 @@ def run_rules(store: Store, district_id: str, *, clock: Clock, as_of: datetime |
 
 def draft(store: Store, district_id: str, *, clock: Clock, by: str = "leafturn") -> Outcome:
     """Draft this week's edition from what is knowable now. An unsigned draft of the week is replaced."""
-    now = clock.now()
+    with _claimed(store, "draft", district_id, clock) as done:
+        done |= _draft(store, district_id, clock.now(), by)
+    return done
+
+
+def _draft(store: Store, district_id: str, now: datetime, by: str) -> Outcome:
     known, book, found = _said(store, district_id, now)
     week = iso_week(known.today)
     edition = Edition(
@@ -307,6 +316,27 @@ def _said(store: Store, district_id: str, as_of: datetime) -> tuple[Known, Book,
     book = _book(store, as_of)
     known = know(store, book, district_id, as_of)
     return known, book, signals.evaluate(known, book)
+
+
+@contextmanager
+def _claimed(store: Store, job: str, district_id: str, clock: Clock) -> Iterator[Outcome]:
+    """One run of a step for a district at a time, from whatever shell; what it did is kept beside it."""
+    now = clock.now()
+    with store.writing() as c:
+        due = local_day(now, network.get_district(c, district_id).zone)
+        run = jobs.claim(c, job, district_id, due, now=now, lasts=LONGEST_STEP, again=True)
+        if run is None:
+            frees = jobs.get(c, job, district_id, due)
+            until = f"{frees.expires_at:%H:%M} UTC" if frees else "a while"
+            raise WrongState(f"another process is at this step for {district_id}; wait for it, or until {until}")
+    done: Outcome = {}
+    failed = True
+    try:
+        yield done
+        failed = False
+    finally:
+        with store.writing() as c:
+            jobs.finish(c, run, now=clock.now(), summary=plain(done), failed=failed)
 
 
 def _book(store: Store, as_of: datetime) -> Book:

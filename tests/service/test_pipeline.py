@@ -16,7 +16,7 @@ from service import mailing, pipeline
 from service.clock import SetClock
 from service.errors import NotFound, Refused, UnsafeText, WrongState
 from service.settings import MailSettings, Settings, WebSettings
-from service.store import editions, network, observations, outbox
+from service.store import editions, jobs, network, observations, outbox
 from service.store import weather as weather_store
 from service.store.base import Store
 from service.tokens import Tokens
@@ -304,3 +304,13 @@ def _links(mail: bytes) -> set[str]:
         if part.get_content_maintype() == "text":
             found |= set(re.findall(r"http://127\.0\.0\.1:\d+/[\w/.-]+", part.get_content()))
     return found
+
+
+def test_a_step_that_another_process_is_at_says_so(full: Store, clock: SetClock) -> None:
+    with full.writing() as c:
+        day = small_network.CUT_OFF.date()
+        jobs.claim(c, "draft", "north", day, now=clock.now(), lasts=timedelta(minutes=10))
+    with pytest.raises(WrongState, match="02:40 UTC"):
+        pipeline.draft(full, "north", clock=clock)
+    clock.set(small_network.CUT_OFF + timedelta(minutes=11))
+    assert pipeline.draft(full, "north", clock=clock)["readers"] == READERS
