@@ -1,5 +1,7 @@
 """Fixtures that every folder shares: a new, empty store of each kind."""
 
+import re
+from collections import Counter
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -32,3 +34,24 @@ def store(store_url: str) -> Iterator[Store]:
     metadata.create_all(opened.engine)
     yield opened
     opened.close()
+
+
+def pytest_terminal_summary(terminalreporter: pytest.TerminalReporter) -> None:
+    """Say how many tests ran on each store; the same set must have run on both."""
+    counts = _by_store(terminalreporter)
+    said = ", ".join(f"{count} on {name}" for name, count in sorted(counts.items()))
+    terminalreporter.write_line(f"tests that passed on each store: {said or 'no store was asked for'}")
+
+
+@pytest.hookimpl(trylast=True)
+def pytest_sessionfinish(session: pytest.Session) -> None:
+    reporter = session.config.pluginmanager.get_plugin("terminalreporter")
+    if reporter is not None and not hasattr(session.config, "workerinput"):
+        counts = _by_store(reporter)
+        if session.exitstatus == pytest.ExitCode.OK and len(set(counts.values())) > 1:
+            session.exitstatus = pytest.ExitCode.TESTS_FAILED
+
+
+def _by_store(reporter: pytest.TerminalReporter) -> Counter[str]:
+    found = (re.search(r"[\[-](sqlite|postgresql)[\]-]", report.nodeid) for report in reporter.stats.get("passed", ()))
+    return Counter(match.group(1) for match in found if match)
