@@ -128,7 +128,7 @@ def _weekly(_shared: None, item: tuple[int, Reader]) -> bytes:
     return composed(*item)
 
 
-def rows(only: str = "") -> Iterator[dict[str, Any]]:
+def rows(only: str | None = None) -> Iterator[dict[str, Any]]:
     """The row of this bench, if it is asked for."""
     if only and only != "compose":
         return
