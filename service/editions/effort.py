@@ -6,6 +6,7 @@ All figures are of the whole district, which is the least that a count may stand
 from collections import Counter
 from collections.abc import Iterable, Mapping, Sequence
 from datetime import timedelta
+from math import sqrt
 from typing import Any
 
 from rules.proportions import wilson
@@ -18,6 +19,7 @@ MOST_BY_ONE = 0.6
 USUAL_WEEKS = 8
 FEWEST_WEEKS = 3
 MANY_TIMES = 2.0
+BEYOND_CHANCE = 3.0  # standard errors of a count
 
 
 def statements(known: Known, pests: Iterable[str]) -> list[Statement]:
@@ -53,8 +55,9 @@ def _more_looking(known: Known, pest: str, lately: Sequence[Look], rows: Mapping
     """More looks than usual, and no greater share of finds among them.
 
     Set against each other are the busiest seven days of the last 14 and the eight weeks before those 14
-    days (from the season's first look on, at least three weeks). *More*: twice the weekly mean or more.
-    *No more often*: the 95 % Wilson intervals of the two shares overlap, or the share is lower.
+    days (from the season's first look on, at least three weeks). *More*: twice the weekly mean or more,
+    and beyond it by three times its root, which chance seldom reaches. *No more often*: the 95 % Wilson
+    intervals of the two shares overlap, or the share is lower.
     """
     if not any(look.found for look in lately):
         return []
@@ -65,7 +68,8 @@ def _more_looking(known: Known, pest: str, lately: Sequence[Look], rows: Mapping
     busy = max((_week(lately, known, back) for back in range(RECENT_DAYS - 6)), key=len)
     usual = len(earlier) / weeks
     now, then = (sum(look.found for look in looks) for looks in (busy, earlier))
-    if len(busy) < MANY_TIMES * usual or wilson(now, len(busy))[0] > wilson(then, len(earlier))[1]:
+    many = max(MANY_TIMES * usual, usual + BEYOND_CHANCE * sqrt(usual))
+    if len(busy) < many or wilson(now, len(busy))[0] > wilson(then, len(earlier))[1]:
         return []
     figures = {
         "looks": len(busy),

@@ -134,9 +134,10 @@ def _silence(slip: Slip, head: Head) -> list[Sentence]:
         return [Sentence(text, "reader:looks")]
     made = f"in the last 14 days, {say.how_many(looks, 'look')} {'was' if looks == 1 else 'were'} made within 20 km"
     if not finds:
-        text = f"Nothing was reported near you: {made}. That can't tell what nobody looked for."
+        text = f"Nothing was reported near you: {made}. That does not rule pests out."
     else:
-        text = f"{say.capital(made)}. What they found asks for no special look, as far as we know your crops' stages."
+        asked = "At the stages we know for your crops, we ask for no special look; that does not rule pests out."
+        text = f"{say.capital(made)}. {asked}"
     return [Sentence(text, "reader:looks")]
 
 
@@ -154,7 +155,10 @@ def _around(slip: Slip, statements: Mapping[str, Statement], head: Head, book: B
     for line in slip.around:
         first, *against = [statements[name] for name in line.statements]
         found.append(Sentence(_counts(first, line.own["found"], book), f"statement:{first.hash}"))
-        found += [Sentence(_EFFORT[each.wording](each.figures), f"statement:{each.hash}") for each in against]
+        found += [
+            Sentence(_EFFORT[each.wording](each.figures, book.pests[each.pest].plural), f"statement:{each.hash}")
+            for each in against
+        ]
     unlooked = [book.pests[id].plural for id in slip.own.get("unlooked", ())]
     if unlooked:
         text = f"Nobody in the district looked for {say.listed(unlooked, 'or')} in the last 14 days."
@@ -174,15 +178,15 @@ def _counts(statement: Statement, near: Sequence[int], book: Book) -> str:
     return f"{here}." if near[1] == looks else f"{here}; {finds:,} of {looks:,} in the whole district."
 
 
-def _one_reporter(figures: Mapping[str, Any]) -> str:
+def _one_reporter(figures: Mapping[str, Any], _many: str) -> str:
     return f"Most of these reports ({figures['by_one']} of {figures['finds']} in the district) came from one person."
 
 
-def _more_looking(figures: Mapping[str, Any]) -> str:
+def _more_looking(figures: Mapping[str, Any], many: str) -> str:
     usual = say.number(figures["usual_looks"])
     return (
         f"More people looked than usual ({say.how_many(figures['looks'], 'look')} in a week; usually {usual}), "
-        "and the pest turned up no more often than usual."
+        f"and {many} turned up no more often than usual."
     )
 
 

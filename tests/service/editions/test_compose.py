@@ -211,6 +211,14 @@ def test_more_looking_with_no_more_finds_is_said_to_be() -> None:
     }
 
 
+def test_a_few_more_looks_than_usual_are_no_news() -> None:
+    # By hand: usually 2 a week, so from max(2 × 2, 2 + 3√2 = 6.2) on it is more; 6 is not.
+    busy = [cast.look(i, i < 3, ago=3) for i in range(6)]
+    assert "more_looking" not in wordings(cast.edition([*busy, *usual()]))
+    busy.append(cast.look(7, False, ago=3))
+    assert "more_looking" in wordings(cast.edition([*busy, *usual()]))
+
+
 def test_more_finds_than_effort_explains_are_not_explained_away() -> None:
     # By hand, Wilson 95 %: 8 of 8 gives 0.676 to 1; 0 of 10 gives 0 to 0.278: they do not overlap.
     busy = [cast.look(i, True, ago=3) for i in range(8)]

@@ -233,6 +233,15 @@ def test_effort_is_held_against_the_counts() -> None:
     )
 
 
+def test_more_looking_is_held_against_the_finds() -> None:
+    busy = [cast.look(i, i < 4, ago=3) for i in range(8)]
+    usual = [cast.look(i, i == 1, ago=14 + 7 * week) for week in range(5) for i in (1, 2)]
+    assert (
+        "More people looked than usual (8 looks in a week; usually 2), "
+        "and redlegged earth mites turned up no more often than usual." in text(rows=[*busy, *usual])
+    )
+
+
 def test_many_signals_of_one_pest_make_one_card() -> None:
     row = cast.look(1, True)
     shown = cast.said(cast.edition([row], [cast.hatch(), cast.first_seen(row), cast.threshold(1)]))
