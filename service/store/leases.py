@@ -25,7 +25,7 @@ from sqlalchemy.dialects import postgresql, sqlite
 
 from service.store.base import UtcTime
 from service.store.editions import edition
-from service.store.outbox import ANSWER_LENGTH, HELD, NO_LEASE, WAITING, change, delivery, outbox, state_in
+from service.store.outbox import ANSWER_LENGTH, HELD, NO_LEASE, WAITING, change, delivery, held, outbox, state_in
 
 T = TypeVar("T")
 Work = Callable[[Connection], T]  # what a worker does in one transaction
@@ -73,6 +73,7 @@ class _Held:
 
 def claim(c: Connection, worker: str, now: datetime, n: int, lease_s: float) -> list[Job]:
     """Lease up to `n` rows that may go out now: notices first, then the rows of sent editions."""
+    _in_index_order(c)
     ids: list[int] = []
     for source in (None, *_editions_with_mail(c, now)):
         if len(ids) < n:
@@ -117,7 +118,7 @@ def renew(c: Connection, worker: str, now: datetime, lease_until: datetime) -> i
 
 def release(c: Connection, worker: str, now: datetime) -> int:
     """Put back what a worker leased and has not begun to send."""
-    mine = (state_in(("leased",)), outbox.c.leased_by == worker)
+    mine = (*held("leased"), outbox.c.leased_by == worker)
     return change(c, mine, {"state": "queued", "updated_at": now} | NO_LEASE)
 
 
@@ -129,8 +130,8 @@ def recover(c: Connection, now: datetime, doubtful: str = "retry") -> dict[str, 
     """
     run_out = outbox.c.lease_until <= now
     back = {"state": "queued", "updated_at": now} | NO_LEASE
-    returned = change(c, (state_in(("leased",)), run_out), back)
-    sending = (state_in(("sending",)), run_out)
+    returned = change(c, (*held("leased"), run_out), back)
+    sending = (*held("sending"), run_out)
     lost = c.execute(select(outbox.c.id, outbox.c.attempts).where(*sending).order_by(outbox.c.id).with_for_update())
     text = "the process ended before the answer was recorded"
     found = [{"outbox": row.id, "attempt": row.attempts, "at": now, "answer": text} for row in lost]
@@ -170,13 +171,13 @@ _RECORD = (
 
 def _recorded(result: Result, now: datetime) -> dict[str, Any]:
     said = f"{result.code} {result.answer}" if result.code else result.answer
-    held = now if result.state == "sending" else None  # doubtful and held: its lease ends here
+    until = now if result.state == "sending" else None  # doubtful, and left so: its lease ends here
     return {
         "row": result.job.id,
         "next": result.state,
         "next_due": result.due,
         "said": said[:ANSWER_LENGTH],
-        "until": held,
+        "until": until,
         "at": now,
     }
 
@@ -198,8 +199,14 @@ def _still_ours(c: Connection, jobs: Sequence[Job], states: Sequence[str]) -> di
     fences = {job.id: job.fence for job in jobs}
     query = select(outbox.c.id, outbox.c.fence, outbox.c.attempts, outbox.c.state)
     rows = c.execute(query.where(outbox.c.id.in_(fences)).order_by(outbox.c.id).with_for_update())
-    held = (_Held(*row) for row in rows)
-    return {row.id: row for row in held if row.fence == fences[row.id] and row.state in states}
+    found = (_Held(*row) for row in rows)
+    return {row.id: row for row in found if row.fence == fences[row.id] and row.state in states}
+
+
+def _in_index_order(c: Connection) -> None:
+    """Before its first statistics PostgreSQL takes the queue for short, and would read and sort all of it."""
+    if c.dialect.name != "sqlite":
+        c.exec_driver_sql("SET LOCAL enable_sort = off")
 
 
 def _ready(now: datetime) -> tuple[ColumnElement[bool], ...]:
@@ -214,5 +221,5 @@ def _editions_with_mail(c: Connection, now: datetime) -> list[str]:
 
 def _due_rows(source: str | None, now: datetime, n: int) -> Select[tuple[int]]:
     in_source = outbox.c.edition.is_(None) if source is None else outbox.c.edition == source
-    rows = select(outbox.c.id).where(in_source, *_ready(now)).order_by(outbox.c.due, outbox.c.id)
+    rows = select(outbox.c.id).where(in_source, *_ready(now)).order_by(outbox.c.edition, outbox.c.due, outbox.c.id)
     return rows.limit(n).with_for_update(skip_locked=True)

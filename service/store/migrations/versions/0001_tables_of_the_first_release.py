@@ -307,14 +307,14 @@ def upgrade() -> None:
         )
         batch_op.create_index(
             "ix_outbox_held",
-            ["lease_until"],
+            ["state", "lease_until"],
             unique=False,
             sqlite_where=sa.text("state IN ('leased', 'sending')"),
             postgresql_where=sa.text("state IN ('leased', 'sending')"),
         )
         batch_op.create_index(
             "ix_outbox_waiting",
-            ["edition", "due"],
+            ["edition", "due", "id"],
             unique=False,
             sqlite_where=sa.text("state IN ('queued', 'deferred')"),
             postgresql_where=sa.text("state IN ('queued', 'deferred')"),
