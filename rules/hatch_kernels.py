@@ -2,7 +2,8 @@
 
 A cell's state is one integer that carries its phase, so that a day is a few selections without a
 branch. `UNARMED + d`: waiting for rain, whose window is whole from day d on. `d >= 0`: waiting for
-cool, met on day d unless a day in between is not cool. `-1 - d`: met on day d.
+cool, met on day d unless a day in between is not cool. `-1 - d`: met on day d. Steps take whole arrays
+and unsigned indices: slices would count references, and signed indices might mean the array's end.
 """
 
 from typing import Any
@@ -25,25 +26,28 @@ def _met_on(state: Any, out: Any) -> None:
 
 @kernel()
 def _rain_then_cool_step(
-    t: int, start: int, x: Any, y: Any, old: Any, state: Any, total: Any, rain_day: Any,
-    rain_limit: float, rain_days: int, cool_below: Any, cool_days: int,
+    t: int, tmean: Any, rain: Any, first: int, last: int, low: int, state: Any, total: Any, rain_day: Any,
+    start: int, rain_limit: float, rain_days: int, cool_below: Any, cool_days: int,
 ) -> int:  # fmt: skip
-    """One day of `STEP` cells; `old` is the rain that leaves the window."""
-    zero, huge, bad = y.dtype.type(0), x.dtype.type(HUGE), 0
+    """Day t of the cells first:last; state and total begin at the cell `low`."""
+    zero, huge, bad = rain.dtype.type(0), tmean.dtype.type(HUGE), 0
     today, met, again = np.int32(t), np.int32(-1 - t), np.int32(t + cool_days)
     blocked = np.int32(UNARMED + t + rain_days)
     whole = np.int32(UNARMED + t) if t >= start else NEVER
-    for c in range(state.size):
-        was = state[c]
-        total[c] += np.float64(y[c] if y[c] > zero else zero) - np.float64(old[c] if old[c] > zero else zero)
-        unarmed = blocked if np.isnan(y[c]) else was
+    day, leaving = np.uint64(t), np.uint64(max(t - rain_days, 0))
+    for cell in range(np.uint64(first), np.uint64(last)):
+        c = cell - np.uint64(low)
+        was, x, y = state[c], tmean[day, cell], rain[day, cell]
+        old = rain[leaving, cell] if t >= rain_days else zero
+        total[c] += np.float64(y if y > zero else zero) - np.float64(old if old > zero else zero)
+        unarmed = blocked if np.isnan(y) else was
         begins = (was >= UNARMED) & (unarmed <= whole) & (total[c] > rain_limit)
-        rain_day[c] = today if begins else rain_day[c]
+        rain_day[cell] = today if begins else rain_day[cell]
         unarmed = again if begins else unarmed
-        armed = was if x[c] < cool_below else again
+        armed = was if x < cool_below else again
         armed = met if armed <= today else armed
         state[c] = unarmed if was >= UNARMED else (was if was < 0 else armed)
-        bad |= (y[c] < zero) | (y[c] > huge) | (abs(x[c]) > huge)
+        bad |= (y < zero) | (y > huge) | (abs(x) > huge)
     return bad
 
 
@@ -56,16 +60,14 @@ def rain_then_cool_block(
     days, cells, bad = tmean.shape[0], high - low, 0
     state = np.full(cells, UNARMED + rain_days - 1, np.int32)
     total = np.zeros(cells)
-    dry = np.zeros(STEP, rain.dtype)
     for t in range(days):
-        for f in range(low, high, STEP):
-            g = min(f + STEP, high)
-            fetch(tmean, min(t + 1, days - 1), f, g)
-            fetch(rain, min(t + 1, days - 1), f, g)
-            old = rain[t - rain_days, f:g] if t >= rain_days else dry[: g - f]
+        for first in range(low, high, STEP):
+            last = min(first + STEP, high)
+            fetch(tmean, min(t + 1, days - 1), first, last)
+            fetch(rain, min(t + 1, days - 1), first, last)
             bad |= _rain_then_cool_step(
-                t, start, tmean[t, f:g], rain[t, f:g], old, state[f - low : g - low], total[f - low : g - low],
-                rain_day[f:g], rain_limit, rain_days, cool_below, cool_days,
+                t, tmean, rain, first, last, low, state, total, rain_day,
+                start, rain_limit, rain_days, cool_below, cool_days,
             )  # fmt: skip
     _met_on(state, out[low:high])
     return bad
@@ -87,21 +89,24 @@ def rain_then_cool_blocks(
 
 @kernel()
 def _first_day_step(
-    t: int, x: Any, y: Any, state: Any, wet: Any,
+    t: int, tmean: Any, rain: Any, first: int, last: int, low: int, state: Any, wet: Any,
     cool_at_most: Any, cool_days: int, rain_at_least: Any, rain_within: int,
 ) -> int:  # fmt: skip
-    """One day of `STEP` cells; `wet` is the last day on which the newest rain still counts."""
-    zero, huge, bad = y.dtype.type(0), x.dtype.type(HUGE), 0
+    """Day t of the cells first:last; `wet`, from the cell `low` on, is the last day that the newest rain counts."""
+    zero, huge, bad = rain.dtype.type(0), tmean.dtype.type(HUGE), 0
     today, met, counts_to = np.int32(t), np.int32(-1 - t), np.int32(t + rain_within - 1)
     warm, missing = np.int32(t + cool_days), np.int32(t + rain_within)
-    for c in range(state.size):
-        was = state[c]
-        until = was if x[c] <= cool_at_most else max(was, warm)
-        until = max(until, missing) if np.isnan(y[c]) else until
-        wet[c] = counts_to if y[c] >= rain_at_least else wet[c]
-        until = met if (until <= today) & (wet[c] >= today) else until
+    day = np.uint64(t)
+    for cell in range(np.uint64(first), np.uint64(last)):
+        c = cell - np.uint64(low)
+        was, x, y = state[c], tmean[day, cell], rain[day, cell]
+        until = was if x <= cool_at_most else max(was, warm)
+        until = max(until, missing) if np.isnan(y) else until
+        wet_to = counts_to if y >= rain_at_least else wet[c]
+        wet[c] = wet_to
+        until = met if (until <= today) & (wet_to >= today) else until
         state[c] = was if was < 0 else until
-        bad |= (y[c] < zero) | (y[c] > huge) | (abs(x[c]) > huge)
+        bad |= (y < zero) | (y > huge) | (abs(x) > huge)
     return bad
 
 
@@ -115,13 +120,12 @@ def first_day_block(
     state = np.full(cells, max(start, cool_days - 1, rain_within - 1), np.int32)
     wet = np.full(cells, -1, np.int32)
     for t in range(days):
-        for f in range(low, high, STEP):
-            g = min(f + STEP, high)
-            fetch(tmean, min(t + 1, days - 1), f, g)
-            fetch(rain, min(t + 1, days - 1), f, g)
+        for first in range(low, high, STEP):
+            last = min(first + STEP, high)
+            fetch(tmean, min(t + 1, days - 1), first, last)
+            fetch(rain, min(t + 1, days - 1), first, last)
             bad |= _first_day_step(
-                t, tmean[t, f:g], rain[t, f:g], state[f - low : g - low], wet[f - low : g - low],
-                cool_at_most, cool_days, rain_at_least, rain_within,
+                t, tmean, rain, first, last, low, state, wet, cool_at_most, cool_days, rain_at_least, rain_within
             )  # fmt: skip
     _met_on(state, out[low:high])
     return bad
