@@ -1,5 +1,6 @@
 """Nobody's paddock is given away, however many readers put their digests together."""
 
+import html
 import random
 from collections.abc import Iterable
 from datetime import date
@@ -7,14 +8,15 @@ from datetime import date
 import pytest
 
 from rules.records import Holding, Known, Observation, Paddock, Place, Signal, Subscriber
+from rules.slip import Rendered
 from service import places
 from service.editions import privacy
 from service.editions.compose import compose
 from service.editions.privacy import Near
+from service.editions.render import render
 from tests.builders import LAT, LON, a_district, a_holding, a_paddock, a_postcode, an_observation
 from tests.known import known
 from tests.service.editions import cast
-from tests.service.editions.plain import printed
 
 HOLDINGS = 40
 HIDE = 5
@@ -72,7 +74,12 @@ def what_strangers_read(i: int, counted: bool, hide: int = HIDE) -> tuple[str, .
     """All that fifty strangers are told of a find on farm i, put together."""
     rows, signals = found_at(i, counted)
     composed = compose(a_known(rows, hide), signals, cast.BOOK, READERS)
-    return tuple(printed(cast.said(composed, reader.id)) for reader in READERS)
+    return tuple(mailed(render(cast.said(composed, reader.id))) for reader in READERS)
+
+
+def mailed(rendered: Rendered) -> str:
+    """Subject, text and HTML source, as they arrive."""
+    return "\n".join((rendered.subject, rendered.text, html.unescape(rendered.html)))
 
 
 def a_known(rows: Iterable[Observation], hide: int = HIDE) -> Known:
