@@ -71,8 +71,8 @@ class Builder:
         found = {name: values[name] for name in AS_GIVEN if name in values and values[name].null_count < size}
         found["present"] = pc.equal(values["status"], "present")
         found |= columns.places(values, size, self.frame)
-        found["why"] = pc.fill_null(found.get("why", pa.nulls(size, pa.string())), Why.UNKNOWN.value)
-        said = bodies(found, size)
+        why = pc.fill_null(values.get("why", pa.nulls(size, pa.string())), Why.UNKNOWN.value)
+        said = bodies(found | {"why": why}, size)
         keys = self._keys(values, said)
         joined = b"".join(digests(said, keys))
         found["key"] = pa.array(keys, pa.string())
@@ -101,7 +101,7 @@ class Builder:
         now = micros(self.frame.now)
         stated = values.get("arrived_at", pa.nulls(size, pa.int64()))
         if not self.history:
-            return {"arrived_at": pc.fill_null(stated, now)}
+            return {"arrived_at": pc.fill_null(stated, now)} if stated.null_count < size else {}
         different, which = columns.combined(found, ("district", "day"), size)
         assumed = pa.array([micros(self._assumed(*each)) for each in different]).take(pa.array(which))
         arrived = pc.coalesce(stated, assumed)
@@ -110,7 +110,24 @@ class Builder:
     def _assumed(self, district: str, day: date) -> datetime:
         return min(end_of_day(day, self.frame.districts[district].zone) + ASSUMED_LAG, self.frame.now)
 
+    def join(self, blocks: Sequence[pa.Table]) -> pa.Table:
+        """The blocks as one table; where some give a column and others don't, with what is usual in it."""
+        whole = pa.concat_tables(blocks, promote_options="default")
+        for name, value in self.constants(()).items():
+            if name in whole.column_names and whole[name].null_count:
+                at = whole.column_names.index(name)
+                whole = whole.set_column(at, name, pc.fill_null(whole[name], value))
+        return whole
+
     def constants(self, names: Sequence[str]) -> dict[str, Any]:
         """What is equal in all rows of this file, of the columns that `names` do not hold."""
-        same = {"knowable_from": micros(self.frame.now), "history": self.history, "arrival_assumed": False}
+        now = micros(self.frame.now)
+        same = {
+            "version": 1,
+            "why": Why.UNKNOWN.value,
+            "arrived_at": now,
+            "knowable_from": now,
+            "history": self.history,
+            "arrival_assumed": False,
+        }
         return {name: value for name, value in same.items() if name not in names}

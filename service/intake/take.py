@@ -5,7 +5,6 @@
 3. They are compared with what the store knows by their keys, and the new ones are added.
 """
 
-from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -19,7 +18,8 @@ from rules.records import Refusal
 from service import rulebook
 from service.clock import Clock
 from service.errors import BadInput
-from service.intake import cells, csv_file, refusals, reportable, sheet
+from service.intake import cells, checking, csv_file, refusals, reportable, sheet
+from service.intake.checking import Progress
 from service.intake.consistency import Mask
 from service.intake.frame import Frame, Names, frame_of
 from service.intake.incoming import Builder
@@ -28,8 +28,6 @@ from service.intake.sheet import Sheet
 from service.store import observation_load, reportables
 from service.store.base import Store
 from service.store.reportables import Case
-
-Progress = Callable[[int, int | None, str], None]  # how many are done, of how many, what is done
 
 
 def take_observations(
@@ -162,16 +160,11 @@ def _put_aside(store: Store, cases: list[Case], frame: Frame) -> str | None:
 
 def _checked(taking: _Taking, builder: Builder, progress: Progress | None) -> pa.Table:
     """The good rows as the store keeps them, sorted by key; the others join the refused."""
-    tables = []
-    for block in csv_file.sift(taking.whole, taking.wanted, taking.frame):
-        taking.refused += block.refused
-        if len(block.numbers):
-            tables.append(builder.build(block.values, block.numbers))
-        if progress is not None:
-            progress(block.last, int(taking.whole.numbers[-1]), "rows checked")
+    tables, refused = checking.check(checking.Part(taking.whole, taking.wanted, builder), progress)
+    taking.refused += refused
     if not tables:
         return pa.table({"key": pa.array([], pa.string())})
-    table = pa.concat_tables(tables, promote_options="default").combine_chunks()
+    table = builder.join(tables).combine_chunks()
     return table.take(pc.sort_indices(table["key"])).combine_chunks()
 
 
@@ -209,7 +202,9 @@ def _add(c: Connection, taking: _Taking, table: pa.Table, builder: Builder, revi
             row, id = table["row"][at].as_py(), _record_id(table["key"][at].as_py())
             taking.refused.append(Refusal(row, "record_id", id, _CHANGED))
     wanted = new | changed if revise else new
-    table = table.drop_columns("row").append_column("version", pa.array(held.newest + 1))
+    table = table.drop_columns("row")
+    if revise and changed.any():
+        table = table.append_column("version", pa.array(held.newest + 1))
     if not wanted.all():
         table = table.filter(pa.array(wanted))
     observation_load.load(c, table, builder.constants(table.column_names))
