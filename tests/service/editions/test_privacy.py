@@ -17,6 +17,7 @@ from service.editions.render import render
 from tests.builders import LAT, LON, a_district, a_holding, a_paddock, a_postcode, an_observation
 from tests.known import known
 from tests.service.editions import cast
+from tests.service.editions.plain import printed
 
 HOLDINGS = 40
 HIDE = 5
