@@ -56,9 +56,13 @@ class Mail:
 
 
 def check(maildir: Path, files: Path) -> dict[str, list[str]]:
-    """Names of the planted events that delivered mail states, misses, or can't state yet, and of the artefacts."""
+    """What the delivered mail of a Maildir states of what was planted in the files."""
     readers = readers_of(files)
-    mails = list(delivered(maildir, readers))
+    return judge(list(delivered(maildir, readers)), readers)
+
+
+def judge(mails: Sequence[Mail], readers: Mapping[str, Reader]) -> dict[str, list[str]]:
+    """Names of the planted events that these mails state, miss, or can't state yet, and of the artefacts."""
     built = [event for event in EVENTS if event.telling in SAID]
     seen = {event.name for event in built if any(states(mail, event, readers) for mail in mails)}
     return {

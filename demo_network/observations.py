@@ -17,10 +17,10 @@ from demo_network.reporters import DAMAGE, FIELD_DAY, Habit, arrival, habits, wh
 from demo_network.seasons import SEASONS, closes
 from demo_network.streams import row_id, stream
 
-VISITS_A_WEEK = {2024: 27.0, 2025: 27.0, 2026: 29.0}  # in one district, before its yearly curve
+VISITS_A_WEEK = {2024: 22.5, 2025: 22.5, 2026: 25.0}  # in one district, before its yearly curve
 FIELD_DAY_WEEKS = {"sextant": (16, 30), "lantern": (18, 31)}
 AT_EDGE = 2
-UNITS = {MITE: ("per_plant", 10, 5), FLEA: ("holes_per_leaf", 10, 5), CUTWORM: ("per_half_metre_row", 1, 10)}
+UNITS = {MITE: ("per_plant", 10, 5), FLEA: ("holes_per_leaf", 10, 5), CUTWORM: ("per_half_metre_row", 2, 10)}
 METHODS = {MITE: "plants and soil searched", FLEA: "leaves turned", CUTWORM: "dug"}
 
 
@@ -54,7 +54,7 @@ def _days(year: int) -> Iterator[date]:
 def _yearly_curve(day: date) -> float:
     """Few looks before sowing, most while crops are young."""
     week = day.isocalendar().week
-    return 0.45 + 0.9 * float(np.exp(-(((week - 22) / 6.5) ** 2)))
+    return 0.7 + 0.5 * float(np.exp(-(((week - 22) / 6.5) ** 2)))
 
 
 def _field_days(district: str, year: int, rng: np.random.Generator) -> list[date]:
@@ -143,7 +143,7 @@ def _low_counts(pest: str, season: Plan, present: bool, rng: np.random.Generator
         seen = [int(n) for n in rng.negative_binomial(2.0, 2.0 / (2.0 + usual), spots)]
     if present:
         seen[int(rng.integers(spots))] += 1
-    return counts(seen, unit, units, AT_EDGE)
+    return counts(seen, unit, units, 0 if pest == CUTWORM else AT_EDGE)
 
 
 def counts(spots: list[int], unit: str, units: int, at_edge: int) -> Row:

@@ -36,7 +36,7 @@ EVENTS = (
         longitude=105.9,
         radius_km=30.0,
         weeks=_weeks(20, 20),
-        adds="one canola paddock at one true leaf, counted by ten spots: 15 to 21 mites a plant along its edge",
+        adds="one canola paddock at one true leaf, its edge counted by eight spots: 15 to 21 mites a plant at each",
         shown_as="the count along the edge is at or above the number that matters",
         rows=planting.edge_count,
     ),

@@ -41,7 +41,7 @@ def rain_then_cool(event: Event, world: World) -> weather.Change:
 
 
 def edge_count(event: Event, world: World) -> list[Row]:
-    """A grower counts mites by spots at one true leaf: many along the edge, few in the middle."""
+    """A grower walks the edge of a paddock at one true leaf and counts mites at eight spots: many at each."""
     rng, day = _start(event, world), days_of(event.weeks[0])[4]
     listed = {id for reader in readers.invent(world) for id in reader.paddocks}
     paddock = next(
@@ -51,10 +51,9 @@ def edge_count(event: Event, world: World) -> list[Row]:
         and world.plans[paddock.id, LIVE].crop == "canola"
         and stage(world.plans[paddock.id, LIVE], day) == 11
     )
-    edge, middle = rng.integers(150, 215, 6), rng.integers(4, 25, 4)
-    spots = [int(n) for n in (*edge, *middle)]
+    spots = [int(n) for n in rng.integers(150, 215, 8)]
     base = _row(world, paddock, MITE, day, world.network.grower_of(paddock), ROUTINE)
-    return _numbered(event, world, [base | {"method": "plants searched"} | counts(spots, "per_plant", 10, len(edge))])
+    return _numbered(event, world, [base | {"method": "plants searched"} | counts(spots, "per_plant", 10, len(spots))])
 
 
 def first_find(event: Event, world: World) -> list[Row]:

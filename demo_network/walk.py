@@ -6,7 +6,7 @@ build the files ─► take network and history ─► each week: take ─► dr
 
 import json
 from collections import Counter
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Collection, Iterator
 from contextlib import closing, contextmanager
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
@@ -29,13 +29,24 @@ NETWORK = ("district.toml", "postcodes.csv", "holdings.csv", "paddocks.csv", "pe
 READERS = "subscribers.csv"  # after the paddocks that they name
 DATED = ("paddocks.csv", "station_days.csv", "observations.csv")
 PARTS = ("files", "mail", "slips", "store", "leafturn.toml", "index.html", "summary.json")
+COUNTED = ("observations", "station_days", "signals", "slips", "delivered")
 TO_SIGNING = timedelta(hours=22)  # from the cut-off to Wednesday at ten
 Step = Callable[[int, int, str], None]
 Outcome = dict[str, Any]
 
 
-def run(folder: Path, console: Console, *, seed: int = SEED, without: frozenset[str] = frozenset()) -> Outcome:
-    """Walk the season; leave the files, the mail, a page and a summary in the folder, and return the summary."""
+def run(
+    folder: Path,
+    console: Console,
+    *,
+    seed: int = SEED,
+    without: frozenset[str] = frozenset(),
+    only: Collection[str] = (),
+) -> Outcome:
+    """Walk the season; leave the files, the mail, a page and a summary in the folder, and return the summary.
+
+    `without` leaves planted events out; `only` names the weeks to draft and deliver, for a shorter walk.
+    """
     room.make(folder, PARTS)
     build(folder / "files", seed=seed, without=without)
     with _bar(console) as step, pipeline.mail_server(folder / "mail") as server:
@@ -43,9 +54,8 @@ def run(folder: Path, console: Console, *, seed: int = SEED, without: frozenset[
         with closing(pipeline.open_store(settings)) as store:
             walk = Walk(folder / "files", store, settings)
             walk.past(step)
-            weeks = walk.season(step)
-    summary = _summary(folder, walk.counts, weeks)
-    _leave(folder, summary, weeks)
+            weeks = walk.season(step, only or WEEKS, only or SIGNED)
+    summary = _leave(folder, walk.counts, weeks)
     _tell(console, folder, summary)
     return summary
 
@@ -70,8 +80,8 @@ class Walk:
             for name in DATED:
                 self._take(self.files / "history" / season / name, history=name != "paddocks.csv")
 
-    def season(self, step: Step) -> list[Outcome]:
-        """Every live week of both districts: what arrived is taken, a digest drafted, and in ten weeks sent."""
+    def season(self, step: Step, drafted: Collection[str], signed: Collection[str]) -> list[Outcome]:
+        """Week by week, what arrived is taken; of both districts a digest is drafted, and in some weeks sent."""
         weeks = []
         for number, week in enumerate(WEEKS):
             step(number, len(WEEKS), f"Week {week}")
@@ -80,11 +90,12 @@ class Walk:
             for name in DATED:
                 if (self.files / "season3" / week / name).exists():
                     self._take(self.files / "season3" / week / name)
-            weeks += [self._draft(district) for district in DISTRICTS]
-            if week in SIGNED:
+            outcomes = [self._draft(district) for district in DISTRICTS if week in drafted]
+            if week in signed:
                 self.clock.set(noon + TO_SIGNING)
-                for drafted in weeks[-len(DISTRICTS) :]:
-                    self._send(drafted)
+                for outcome in outcomes:
+                    self._send(outcome)
+            weeks += outcomes
         step(len(WEEKS), len(WEEKS), "All weeks")
         return weeks
 
@@ -131,27 +142,23 @@ def _settings(folder: Path, port: int) -> Settings:
 # --- what is left behind -------------------------------------------------------------------------
 
 
-def _summary(folder: Path, counts: Counter[str], weeks: list[Outcome]) -> Outcome:
-    names = ("observations", "station_days", "signals", "slips", "delivered")
-    return {name: counts[name] for name in names} | check.check(folder / "mail", folder / "files")
-
-
-def _leave(folder: Path, summary: Outcome, weeks: list[Outcome]) -> None:
-    """The summary, the kept digests, and the page that leads to them."""
-    (folder / "summary.json").write_text(json.dumps(summary, indent=2) + "\n", encoding="utf-8")
+def _leave(folder: Path, counts: Counter[str], weeks: list[Outcome]) -> Outcome:
+    """Read the delivered mail; leave the summary, a dozen digests, and the page that leads to them."""
     readers = check.readers_of(folder / "files")
     mails = list(check.delivered(folder / "mail", readers))
-    kept = keepsakes.keep(folder / "mail", folder / "slips", mails, readers)
+    summary = {name: counts[name] for name in COUNTED} | check.judge(mails, readers)
+    (folder / "summary.json").write_text(json.dumps(summary, indent=2) + "\n", encoding="utf-8")
     page.write(
         folder / "index.html",
         summary,
-        kept,
+        keepsakes.keep(folder / "mail", folder / "slips", mails, readers),
         weeks,
         edition=f"lantern-{SIGNED[4]}",
         reader="b-r01",
         settings=str(folder / "leafturn.toml"),
         files=str(folder / "files"),
     )
+    return summary
 
 
 def _tell(console: Console, folder: Path, summary: Outcome) -> None:
