@@ -32,7 +32,7 @@ def a_message(key: str = "reader", **changes: Any) -> Outgoing:
 def put(store: Store, *keys: str, now: datetime = NOW) -> None:
     """A district, and one notice for each key."""
     with store.writing() as c:
-        network.save_district(c, a_district())
+        network.save_district(c, a_district(), NOW)
         outbox.enqueue(c, [a_message(key) for key in keys], now)
 
 
