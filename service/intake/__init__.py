@@ -1,5 +1,5 @@
 """What comes in from people: observations, and the files of the network."""
 
-from service.intake.take import take_observations
+from service.intake.take import take_observations, unreadable
 
-__all__ = ["take_observations"]
+__all__ = ["take_observations", "unreadable"]

@@ -161,21 +161,25 @@ def _count_without_unit(view: View, frame: Frame) -> Mask:
 
 
 def _absent_but_counted(view: View, frame: Frame) -> Mask:
-    return view.equals("status", "absent") & ((view.number("count") > 0) | (view.number("spot_total") > 0))
+    found: Mask = view.equals("status", "absent") & ((view.number("count") > 0) | (view.number("spot_total") > 0))
+    return found
 
 
 def _present_but_none(view: View, frame: Frame) -> Mask:
     none = (view.number("count") == 0) | (view.number("spot_total") == 0)
     some = (view.number("count") > 0) | (view.number("spot_total") > 0)
-    return view.equals("status", "present") & none & ~some
+    found: Mask = view.equals("status", "present") & none & ~some
+    return found
 
 
 def _over_all(view: View, frame: Frame) -> Mask:
-    return view.equals("unit", "percent_plants") & (view.number("count") > 100)
+    found: Mask = view.equals("unit", "percent_plants") & (view.number("count") > 100)
+    return found
 
 
 def _spots_differ(view: View, frame: Frame) -> Mask:
-    return view.given("spot_at") & np.not_equal(view.number("spot_at_n"), view.number("spot_n"))
+    found: Mask = view.given("spot_at") & np.not_equal(view.number("spot_at_n"), view.number("spot_n"))
+    return found
 
 
 def _zadoks_elsewhere(view: View, frame: Frame) -> Mask:

@@ -142,7 +142,8 @@ def _holding(column: pa.Array, name: str, pattern: str) -> Mask:
     if name not in (*cells.PLAIN, *cells.PROSE):
         coded = column.dictionary_encode()
         hits = [re.search(pattern, fold(text)) is not None for text in coded.dictionary.to_pylist()]
-        return np.array(hits, bool)[coded.indices.to_numpy()]
+        found[:] = np.array(hits, bool)[coded.indices.to_numpy()]
+        return found
     found[:] = pc.match_substring_regex(column, pattern, ignore_case=True).to_numpy(zero_copy_only=False)
     accented = np.flatnonzero(~pc.string_is_ascii(column).to_numpy(zero_copy_only=False))
     found[accented] = [re.search(pattern, fold(text)) is not None for text in column.take(accented).to_pylist()]

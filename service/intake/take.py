@@ -17,7 +17,7 @@ from sqlalchemy import Connection
 from rules.records import Refusal
 from service import rulebook
 from service.clock import Clock
-from service.errors import BadInput
+from service.errors import BadInput, NotFound
 from service.intake import cells, checking, csv_file, refusals, reportable, sheet
 from service.intake.checking import Progress
 from service.intake.consistency import Mask
@@ -131,15 +131,27 @@ def _open(store: Store, path: Path, frame: Frame) -> _Taking:
     try:
         whole = sheet.read(path)
     except BadInput as error:
-        raise _unreadable(store, path, frame, error) from None
+        raise _told_apart(store, path, frame, error) from None
     matching, odd, cases = reportable.cases_in(whole, path, frame)
     first = _put_aside(store, cases, frame)
     name = reportable.showable(path.name, "the file", frame)
     return _Taking(name, whole, frame, ~matching, csv_file.misfits(whole, odd), first)
 
 
-def _unreadable(store: Store, path: Path, frame: Frame, error: BadInput) -> BadInput:
-    """The refusal of a file that is no table; it names nothing that stands on a list."""
+def unreadable(store: Store, path: Path, error: BadInput, *, clock: Clock) -> BadInput:
+    """The refusal of a file of whatever kind that could not be read, after it was searched for listed pests.
+
+    Raise what this gives in place of `error`: it names nothing that stands on a list, and begins with what
+    the reporter must read first.
+    """
+    try:
+        frame = frame_of(store, Names.of(rulebook.load()), clock.now())
+    except NotFound:  # no district yet, so no list
+        return error
+    return _told_apart(store, path, frame, error)
+
+
+def _told_apart(store: Store, path: Path, frame: Frame, error: BadInput) -> BadInput:
     text = path.read_bytes().decode("latin-1") if path.is_file() else ""
     first = _put_aside(store, reportable.cases_in_text(text, path, frame), frame)
     words = reportable.showable(str(error), "the file is no table of observations; check its header and rows", frame)

@@ -9,12 +9,12 @@ from pathlib import Path
 import pytest
 
 from service.errors import BadInput
-from service.intake import reportable
+from service.intake import reportable, unreadable
 from service.store import reportables
 from service.store.base import Store, metadata
 from service.store.reportables import Case
 from tests.builders import NOW
-from tests.service.intake.network import all_of, csv_of, row, settle, take, write
+from tests.service.intake.network import CLOCK, all_of, csv_of, row, settle, take, write
 
 LISTED = "ghost beetle"
 FIRST = "Please ring the invented plant health line now: 0000 000 000."
@@ -129,6 +129,19 @@ def test_what_is_no_table_is_searched_by_line(store: Store, tmp_path: Path, text
     assert all("beetle" not in refusal.value for refusal in error.value.refusals)
     assert [list(case.row.values()) for case in cases(store) if "beetle" in str(case.row)] != []
     assert all_of(store) == []
+
+
+def test_a_file_of_no_known_kind_is_searched_before_it_is_refused(store: Store, tmp_path: Path) -> None:
+    path = write(tmp_path, "when,what\ntoday,ghost beetle\n", "ghost beetle.csv")
+    error = BadInput(f"{path.name} fits no kind of file")
+    assert unreadable(store, path, error, clock=CLOCK) is error  # no district, so no list
+    settle(store)
+    told = str(unreadable(store, path, error, clock=CLOCK))
+    assert told.startswith(FIRST)
+    assert "beetle" not in told
+    assert [case.row for case in cases(store)] != []
+    plain = write(tmp_path, "when,what\ntoday,mites\n", "mites.csv")
+    assert str(unreadable(store, plain, BadInput("mites.csv fits no kind"), clock=CLOCK)) == "mites.csv fits no kind"
 
 
 def test_a_row_of_another_length_is_searched_too(store: Store, tmp_path: Path) -> None:
