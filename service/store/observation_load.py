@@ -150,6 +150,10 @@ _TYPE_OF = {bool: pa.bool_(), int: pa.int64(), str: pa.string()}
 
 
 def _plain(column: pa.Array) -> pa.Array:
-    if pa.types.is_fixed_size_binary(column.type) or pa.types.is_binary(column.type):
-        return pa.array(["\\x" + value.hex() for value in column.to_pylist()])
-    return column
+    if not pa.types.is_fixed_size_binary(column.type):
+        return column
+    width = column.type.byte_width
+    raw = column.buffers()[1].slice(column.offset * width, len(column) * width).to_pybytes().hex()
+    starts = np.arange(len(column) + 1, dtype=np.int32) * (2 * width)
+    digits = pa.StringArray.from_buffers(len(column), pa.py_buffer(starts), pa.py_buffer(raw.encode()))
+    return pc.binary_join_element_wise("\\x", digits, "")
