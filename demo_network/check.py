@@ -36,6 +36,7 @@ _TOLD = re.compile("|".join(map(re.escape, [*PLURALS, *SAID.values()])))
 class Reader:
     """Where a reader is: the postcode's town, and each paddock of theirs."""
 
+    id: str
     district: str
     spots: tuple[Spot, ...]
 
@@ -121,6 +122,7 @@ def readers_of(files: Path) -> dict[str, Reader]:
     paddocks = {row["id"]: _spot(row) for row in _rows(network / "paddocks.csv")}
     return {
         row["email"]: Reader(
+            row["id"],
             row["district"],
             (towns[row["postcode"]], *(paddocks[id] for id in row["paddocks"].split(";") if id)),
         )

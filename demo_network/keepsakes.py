@@ -20,6 +20,7 @@ class Kept:
     name: str
     week: str
     district: str
+    reader: str
     subject: str
     shows: str
 
@@ -31,10 +32,11 @@ def keep(maildir: Path, folder: Path, mails: Sequence[Mail], readers: Mapping[st
     kept = []
     for number, (mail, shows) in enumerate(_chosen(mails, readers), start=1):
         message = box[mail.key]
-        name = f"{number:02d}-{mail.week}-{readers[mail.recipient].district}"
+        reader = readers[mail.recipient]
+        name = f"{number:02d}-{mail.week}-{reader.district}"
         (folder / f"{name}.txt").write_text(plain_text(message), encoding="utf-8")
         (folder / f"{name}.html").write_text(_page(message), encoding="utf-8")
-        kept.append(Kept(name, mail.week, readers[mail.recipient].district, _subject(message), shows))
+        kept.append(Kept(name, mail.week, reader.district, reader.id, _subject(message), shows))
     return kept
 
 

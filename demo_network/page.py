@@ -21,6 +21,7 @@ h1 { font-size: 28px; line-height: 1.2 } h2 { font-size: 21px; margin-top: 40px 
 p, li { max-width: 34rem } a { color: var(--field) } .quiet { color: var(--loam) }
 .wide { overflow-x: auto } table { border-collapse: collapse; width: 100% }
 th, td { border-bottom: 1px solid var(--line); padding: 8px 12px 8px 0; text-align: left; vertical-align: top }
+td:first-child { white-space: nowrap }
 td.n { text-align: right; font-variant-numeric: tabular-nums } th { color: var(--loam); font-weight: 600 }
 code { background: var(--tint); padding: 2px 4px; overflow-wrap: anywhere }
 a:focus-visible { outline: 3px solid var(--ink); outline-offset: 2px }

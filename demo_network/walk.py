@@ -148,13 +148,15 @@ def _leave(folder: Path, counts: Counter[str], weeks: list[Outcome]) -> Outcome:
     mails = list(check.delivered(folder / "mail", readers))
     summary = {name: counts[name] for name in COUNTED} | check.judge(mails, readers)
     (folder / "summary.json").write_text(json.dumps(summary, indent=2) + "\n", encoding="utf-8")
+    kept = keepsakes.keep(folder / "mail", folder / "slips", mails, readers)
+    shown = next((each for each in kept if each.shows.startswith("border")), kept[0])
     page.write(
         folder / "index.html",
         summary,
-        keepsakes.keep(folder / "mail", folder / "slips", mails, readers),
+        kept,
         weeks,
-        edition=f"lantern-{SIGNED[4]}",
-        reader="b-r01",
+        edition=f"{shown.district}-{shown.week}",
+        reader=shown.reader,
         settings=str(folder / "leafturn.toml"),
         files=str(folder / "files"),
     )
