@@ -9,6 +9,7 @@ import pytest
 from rules.records import Observation, Why
 from service.clock import SetClock
 from service.errors import BadInput, NotFound
+from service.intake import checking, csv_file
 from service.intake.refusals import RowsRefused, reasons_path
 from service.places import place
 from service.store import observations
@@ -272,6 +273,53 @@ def test_no_file_is_left_where_nothing_was_refused(store: Store, tmp_path: Path)
     settle(store)
     take(store, write(tmp_path, [row()]), keep_good=tmp_path / "rest.csv")
     assert [each.name for each in tmp_path.glob("*.csv*")] == ["observations.csv"]
+
+
+def test_a_column_that_only_some_blocks_of_rows_fill_is_whole(
+    store: Store, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Rows are checked in blocks; here in blocks of two, so that a small file has several."""
+    monkeypatch.setattr(csv_file, "BLOCK", 2)
+    settle(store)
+    rows = [row(record_id=str(n), why="", note="", arrived_at="") for n in range(5)]
+    rows[2] |= {"why": "asked", "arrived_at": "2026-05-11T00:00Z", "note": "here"}
+    rows[4] |= {"record_id": ""}
+    rows.append(rows[4])
+    assert take(store, write(tmp_path, rows))["new"] == 6
+    found = {each.key: each for each in all_of(store)}
+    assert [key for key, each in found.items() if each.why == Why.ASKED] == ["csv:2"]
+    assert [key for key, each in found.items() if each.arrived_at == datetime(2026, 5, 11, tzinfo=UTC)] == ["csv:2"]
+    assert {each.arrived_at for key, each in found.items() if key != "csv:2"} == {NOW}
+    assert all(content_digest(each) == each.digest for each in found.values())
+
+
+def test_a_large_file_is_checked_by_two_processes_to_the_same_end(
+    store: Store, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    settle(store)
+    rows = [row(record_id=f"{n:02d}", note=f"row {n}") for n in range(20)]
+    rows[2]["day"] = rows[18]["day"] = "2026-02-30"
+    path = write(tmp_path, rows)
+    with pytest.raises(RowsRefused) as whole:
+        take(store, path)
+    monkeypatch.setattr(checking, "LARGE", 10)
+    with pytest.raises(RowsRefused) as halved:
+        take(store, path)
+    assert whole.value.refusals == halved.value.refusals
+    assert [each.row for each in halved.value.refusals] == [4, 20]
+    assert take(store, path, keep_good=tmp_path / "rest.csv") == NONE | {"new": 18, "refused": 2}
+    monkeypatch.setattr(checking, "LARGE", 1000)
+    assert take(store, path, keep_good=tmp_path / "rest.csv") == NONE | {"same": 18, "refused": 2}
+    assert all(content_digest(each) == each.digest for each in all_of(store))
+
+
+def test_a_large_file_with_rows_without_a_record_id_is_checked_in_one(
+    store: Store, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """The ordinals of identical rows run through the whole file."""
+    monkeypatch.setattr(checking, "LARGE", 4)
+    settle(store)
+    assert take(store, write(tmp_path, [row(record_id=" ")] * 8))["new"] == 8
 
 
 # --- past seasons ------------------------------------------------------------------------------
