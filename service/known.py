@@ -16,15 +16,15 @@ from service.store.base import Store
 def know(store: Store, book: Book, district_id: str, as_of: datetime) -> Known:
     """What was knowable at `as_of`; reading it again later gives the same, whatever has arrived since."""
     with store.reading() as c:
-        district = network.get_district(c, district_id)
+        district = network.get_district(c, district_id, as_of)
         today = local_day(as_of, district.zone)
         since = season_from(district, today)
         rows = observations.read(c, district_id, as_of)
         paddocks = network.paddocks(c, district_id, as_of)
-        holdings = network.holdings(c, district_id, since)
-        postcodes = network.postcodes(c, district_id)
+        holdings = network.holdings(c, district_id, as_of, since)
+        postcodes = network.postcodes(c, district_id, as_of)
         people = network.people(c, district_id)
-        stations = weather_store.stations(c, district_id)
+        stations = weather_store.stations(c, district_id, as_of)
         days = weather_store.station_days(c, district_id, as_of, since, today)
     return Known(
         district=district,

@@ -105,7 +105,7 @@ def run_rules(store: Store, district_id: str, *, clock: Clock, as_of: datetime |
     """Run the live rules on what was knowable at a moment, now if none is given, and keep what they say."""
     moment = clock.now()
     if as_of is not None:
-        moment = as_of if as_of.tzinfo else as_of.replace(tzinfo=_zone(store, district_id))
+        moment = as_of if as_of.tzinfo else as_of.replace(tzinfo=_zone(store, district_id, moment))
     with _claimed(store, "rules", district_id, clock) as done:
         _, _, found = _said(store, district_id, moment)
         with store.writing() as c:
@@ -323,7 +323,7 @@ def _claimed(store: Store, job: str, district_id: str, clock: Clock) -> Iterator
     """One run of a step for a district at a time, from whatever shell; what it did is kept beside it."""
     now = clock.now()
     with store.writing() as c:
-        due = local_day(now, network.get_district(c, district_id).zone)
+        due = local_day(now, network.get_district(c, district_id, now).zone)
         run = jobs.claim(c, job, district_id, due, now=now, lasts=LONGEST_STEP, again=True)
         if run is None:
             frees = jobs.get(c, job, district_id, due)
@@ -349,9 +349,9 @@ def _catalogue() -> Book:
     return rulebook.load()
 
 
-def _zone(store: Store, district_id: str) -> ZoneInfo:
+def _zone(store: Store, district_id: str, as_of: datetime) -> ZoneInfo:
     with store.reading() as c:
-        return ZoneInfo(network.get_district(c, district_id).zone)
+        return ZoneInfo(network.get_district(c, district_id, as_of).zone)
 
 
 def _tokens(settings: Settings) -> Tokens:

@@ -9,6 +9,7 @@ from service.places import place
 
 LAT, LON = -46.0, 100.0
 NOW = datetime(2026, 5, 12, 2, 0, tzinfo=UTC)
+FOUNDED = datetime(2026, 1, 5, tzinfo=UTC)  # when a test's network is taken in, before the season opens
 TODAY = date(2026, 5, 12)
 
 

@@ -12,7 +12,7 @@ from service.store import network, observations
 from service.store import weather as weather_store
 from service.store.base import Store
 from service.store.observation_digest import content_digest
-from tests.builders import LAT, LON, a_district, a_holding, a_paddock, a_person, a_postcode, a_subscriber
+from tests.builders import FOUNDED, LAT, LON, a_district, a_holding, a_paddock, a_person, a_postcode, a_subscriber
 
 CUT_OFF = datetime(2026, 5, 12, 2, 30, tzinfo=UTC)  # Tuesday noon in the district
 SOWN = date(2026, 4, 20)
@@ -99,16 +99,16 @@ def fill(store: Store) -> None:
     people = [a_person("ivy", name="Ivy Tern", roles=("coordinator",))]
     people += [a_person(f"grower{i}", name=f"Wren Gannet{i}", roles=("grower",)) for i in range(1, 7)]
     with store.writing() as c:
-        network.save_district(c, a_district())
-        network.save_postcodes(c, [a_postcode()])
+        network.save_district(c, a_district(), FOUNDED)
+        network.save_postcodes(c, [a_postcode()], FOUNDED)
         network.save_people(c, people)
-        network.save_holdings(c, [a_holding(f"h{i}", name=f"Petrel Farm {i}") for i in range(1, 7)])
+        network.save_holdings(c, [a_holding(f"h{i}", name=f"Petrel Farm {i}") for i in range(1, 7)], FOUNDED)
         network.save_paddocks(c, paddocks(), datetime(2026, 5, 3, tzinfo=UTC))
         network.save_subscribers(c, readers())
         stations = [
             Station("buoy1", "north", "Buoy one", place(LAT + 0.1, LON, elevation_m=5.0), "the invented buoys"),
             Station("buoy2", "north", "Buoy two", place(LAT - 0.1, LON + 0.1, elevation_m=5.0), "the invented buoys"),
         ]
-        weather_store.save_stations(c, stations)
+        weather_store.save_stations(c, stations, FOUNDED)
         weather_store.add_station_days(c, station_days())
         observations.add(c, looks())

@@ -53,16 +53,16 @@ class Frame:
 def frame_of(store: Store, names: Names, now: datetime, district: str | None = None) -> Frame:
     """The network of a store as it is known now. The only district there is needs no naming."""
     with store.reading() as c:
-        districts = {each.id: each for each in network.districts(c)}
+        districts = {each.id: each for each in network.districts(c, now)}
         if not districts:
             raise NotFound("there is no district yet; take a district file first")
         if district is not None:
-            network.get_district(c, district)  # says which there are, if it is none of them
+            network.get_district(c, district, now)  # says which there are, if it is none of them
         postcodes: dict[str, dict[str, Postcode]] = {}
         paddocks: dict[str, Paddock] = {}
         people: set[str] = set()
         for id in districts:
-            for postcode in network.postcodes(c, id):
+            for postcode in network.postcodes(c, id, now):
                 postcodes.setdefault(postcode.code, {})[id] = postcode
             paddocks |= {paddock.id: paddock for paddock in network.paddocks(c, id, now)}
             people |= {person.id for person in network.people(c, id)}

@@ -38,7 +38,7 @@ def take_network(store: Store, path: Path, *, clock: Clock) -> dict[str, int]:
     """
     kind = kind_of(path)
     if kind == "district":
-        return _take_districts(store, path)
+        return _take_districts(store, path, clock.now())
     if kind not in NETWORK:
         raise BadInput(f"{path.name} holds {kind}, which are no part of the network")
     table = rows.read(path, NETWORK[kind].required, NETWORK[kind].optional)
@@ -87,13 +87,13 @@ def _keep_state(record: Any, before: Any) -> Any:
     return replace(record, state=before.state) if isinstance(record, Subscriber) and before else record
 
 
-def _take_districts(store: Store, path: Path) -> dict[str, int]:
+def _take_districts(store: Store, path: Path, now: datetime) -> dict[str, int]:
     records = district_file.read(path)
     with store.writing() as c:
-        before = {district.id: district for district in network.districts(c)}
+        before = {district.id: district for district in network.districts(c, now)}
         differing = [record for record in records if before.get(record.id) != record]
         for record in differing:
-            network.save_district(c, record)
+            network.save_district(c, record, now)
     new = sum(record.id not in before for record in records)
     counts = {"rows": len(records), "new": new, "changed": len(differing) - new}
     return counts | {"same": len(records) - len(differing)}
@@ -250,10 +250,10 @@ class _Kind:
 
 
 _KINDS = {
-    "postcodes": _Kind(_postcode, lambda c, records, now: network.save_postcodes(c, records)),
-    "holdings": _Kind(_holding, lambda c, records, now: network.save_holdings(c, records)),
+    "postcodes": _Kind(_postcode, network.save_postcodes),
+    "holdings": _Kind(_holding, network.save_holdings),
     "paddocks": _Kind(_paddock, network.save_paddocks),
     "people": _Kind(_person, lambda c, records, now: network.save_people(c, records)),
     "subscribers": _Kind(_subscriber, lambda c, records, now: network.save_subscribers(c, records)),
-    "stations": _Kind(_station, lambda c, records, now: weather.save_stations(c, records)),
+    "stations": _Kind(_station, weather.save_stations),
 }

@@ -35,8 +35,8 @@ class Network:
 
 
 def load(c: Any, as_of: datetime) -> Network:
-    """Read the network of all districts over an open connection."""
-    districts = {district.id: district for district in network.districts(c)}
+    """Read the network of all districts, as it is known at a moment, over an open connection."""
+    districts = {district.id: district for district in network.districts(c, as_of)}
 
     def each(read: Callable[..., list[Any]], *options: Any) -> dict[str, Any]:
         return {key_of(record): record for district in districts for record in read(c, district, *options)}
@@ -44,12 +44,12 @@ def load(c: Any, as_of: datetime) -> Network:
     subscribers = each(network.subscribers, None)
     return Network(
         districts=districts,
-        postcodes=each(network.postcodes),
-        holdings=each(network.holdings, date.max),
+        postcodes=each(network.postcodes, as_of),
+        holdings=each(network.holdings, as_of, date.max),
         paddocks=each(network.paddocks, as_of),
         people=each(network.people),
         subscribers=subscribers,
-        stations=each(weather.stations),
+        stations=each(weather.stations, as_of),
         readers_of=_grouped((id, reader) for reader in subscribers.values() for id in reader.paddocks),
         left={
             address: frozenset(ids)

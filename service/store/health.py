@@ -16,7 +16,7 @@ def examine(store: Store) -> tuple[bool, str, datetime | None]:
         if store.is_sqlite and (damage := _damage(c)):
             return False, f"the store is damaged ({damage}); bring back a copy of it", None
         newest = _newest(c)
-        districts = network.districts(c)
+        districts = network.districts(c, newest) if newest else []
         rows = c.execute(select(func.count()).select_from(observation)).scalar_one()
     if differences := schema.differences(store):
         return False, f"the store's shape differs from this program's: {differences[0]}", newest
@@ -30,5 +30,6 @@ def _damage(c: Connection) -> str | None:
 
 
 def _newest(c: Connection) -> datetime | None:
-    moments = [c.execute(select(func.max(table.c.knowable_from))).scalar() for table in (observation, station_day)]
+    tables = (observation, station_day, network.district_version, network.paddock)
+    moments = [c.execute(select(func.max(table.c.knowable_from))).scalar() for table in tables]
     return max((moment for moment in moments if moment is not None), default=None)

@@ -1,10 +1,10 @@
 """Districts, postcodes, holdings, paddocks, people, subscribers: the network that a group looks after.
 
-Paddocks are versioned, because their crop and sowing feed rules: each take adds a row, none is changed,
-and a read names the moment it wants them as known at.
+Districts, postcodes, holdings and paddocks feed rules, so they are versioned: each take adds rows, none is
+changed, and a read names the moment it wants them as known at. People and readers are as they are now.
 """
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import asdict
 from datetime import date, datetime
 from typing import Any
@@ -19,11 +19,9 @@ from sqlalchemy import (
     Date,
     Float,
     ForeignKey,
-    Integer,
     Row,
     String,
     Table,
-    and_,
     func,
     insert,
     select,
@@ -39,10 +37,12 @@ from rules.records import (
     Place,
     Postcode,
     Reportable,
+    Station,
     Subscriber,
 )
 from service.errors import NotFound
-from service.store.base import UtcTime, metadata
+from service.store import versions
+from service.store.base import metadata
 
 
 def place_columns() -> list[Column[Any]]:
@@ -61,12 +61,14 @@ def place_of(row: Row[Any]) -> Place:
     return Place(row.latitude, row.longitude, row.cell, row.uncertainty_m, row.elevation_m)
 
 
-district = Table(
-    "district",
+district = Table("district", metadata, Column("id", String, primary_key=True))  # what other rows refer to
+
+district_version = Table(
+    "district_version",
     metadata,
-    Column("id", String, primary_key=True),
-    Column("name", String, nullable=False),
-    Column("record", JSON, nullable=False),  # the rest of the record as plain values
+    Column("id", ForeignKey("district.id"), primary_key=True),
+    *versions.columns(),
+    Column("record", JSON, nullable=False),  # the record as plain values
 )
 
 postcode = Table(
@@ -74,14 +76,18 @@ postcode = Table(
     metadata,
     Column("district", ForeignKey("district.id"), primary_key=True),
     Column("code", String, primary_key=True),
+    *versions.columns(),
     Column("name", String, nullable=False),
     *place_columns(),
 )
 
-holding = Table(
-    "holding",
+holding = Table("holding", metadata, Column("id", String, primary_key=True))  # what other rows refer to
+
+holding_version = Table(
+    "holding_version",
     metadata,
-    Column("id", String, primary_key=True),
+    Column("id", ForeignKey("holding.id"), primary_key=True),
+    *versions.columns(),
     Column("district", ForeignKey("district.id"), nullable=False, index=True),
     Column("name", String, nullable=False),
     Column("registered_on", Date, nullable=False),
@@ -91,8 +97,7 @@ paddock = Table(
     "paddock",
     metadata,
     Column("id", String, primary_key=True),
-    Column("version", Integer, primary_key=True),
-    Column("knowable_from", UtcTime, nullable=False),
+    *versions.columns(),
     Column("holding", ForeignKey("holding.id"), nullable=False, index=True),
     Column("district", ForeignKey("district.id"), nullable=False, index=True),
     Column("name", String, nullable=False),
@@ -142,64 +147,55 @@ subscriber = Table(
 )
 
 
-# --- writing: each takes records and replaces by id, except paddocks, which gain a version -------
+# --- writing: what is versioned gains a version where it differs, people and readers are replaced by id ----
 
 
-def save_district(c: Connection, record: District) -> None:
-    values = {"name": record.name, "record": plain(record)}
-    if not c.execute(update(district).where(district.c.id == record.id).values(values)).rowcount:
-        c.execute(insert(district).values(id=record.id, **values))
+def save_district(c: Connection, record: District, knowable_from: datetime) -> int:
+    """Add a version if the district differs from what is known; returns how many were added."""
+    versions.add_ids(c, district, [record.id])
+    return versions.add(c, district_version, [{"id": record.id, "record": plain(record)}], knowable_from)
 
 
-def save(c: Connection, table: Table, rows: Sequence[dict[str, Any]]) -> int:
-    """Insert rows or replace those whose primary key is known; returns how many are new."""
-    keys = [column.name for column in table.primary_key]
-    new = 0
-    for row in rows:
-        same = and_(*(table.c[key] == row[key] for key in keys))
-        if not c.execute(update(table).where(same).values(row)).rowcount:
-            c.execute(insert(table).values(row))
-            new += 1
-    return new
+def save_postcodes(c: Connection, records: Sequence[Postcode], knowable_from: datetime) -> int:
+    """Add a version of each postcode that differs from what is known; returns how many were added."""
+    return versions.add(c, postcode, map(flat, records), knowable_from)
 
 
-def flat(record: Postcode | Holding | Person | Subscriber | Paddock) -> dict[str, Any]:
+def save_holdings(c: Connection, records: Sequence[Holding], knowable_from: datetime) -> int:
+    """Add a version of each holding that differs from what is known; returns how many were added."""
+    versions.add_ids(c, holding, (record.id for record in records))
+    return versions.add(c, holding_version, map(flat, records), knowable_from)
+
+
+def save_paddocks(c: Connection, records: Sequence[Paddock], knowable_from: datetime) -> int:
+    """Add a version of each paddock that differs from what is known; returns how many were added."""
+    rows = [flat(record) | {"grazed": plain(record.grazed)} for record in records]
+    return versions.add(c, paddock, rows, knowable_from)
+
+
+def save_people(c: Connection, records: Sequence[Person]) -> int:
+    return _replace(c, person, map(flat, records))
+
+
+def save_subscribers(c: Connection, records: Sequence[Subscriber]) -> int:
+    return _replace(c, subscriber, map(flat, records))
+
+
+def flat(record: Postcode | Holding | Paddock | Station | Person | Subscriber) -> dict[str, Any]:
     """A record as one row: its place spread into columns, tuples as lists."""
     row = {name: list(v) if isinstance(v, tuple) else v for name, v in asdict(record).items()}
     row.update(row.pop("place", {}))
     return row
 
 
-def save_postcodes(c: Connection, records: Sequence[Postcode]) -> int:
-    return save(c, postcode, [flat(record) for record in records])
-
-
-def save_holdings(c: Connection, records: Sequence[Holding]) -> int:
-    return save(c, holding, [flat(record) for record in records])
-
-
-def save_people(c: Connection, records: Sequence[Person]) -> int:
-    return save(c, person, [flat(record) for record in records])
-
-
-def save_subscribers(c: Connection, records: Sequence[Subscriber]) -> int:
-    return save(c, subscriber, [flat(record) for record in records])
-
-
-def save_paddocks(c: Connection, records: Sequence[Paddock], knowable_from: datetime) -> int:
-    """Add a version of each paddock that differs from what is known; returns how many were added."""
-    known = {row.id: row for row in c.execute(_newest_paddocks())}
-    added = []
-    for record in records:
-        before = known.get(record.id)
-        if before is not None and paddock_of(before) == record:
-            continue
-        row = flat(record) | {"knowable_from": knowable_from, "version": before.version + 1 if before else 1}
-        row["grazed"] = plain(record.grazed)
-        added.append(row)
-    if added:
-        c.execute(insert(paddock), added)
-    return len(added)
+def _replace(c: Connection, table: Table, rows: Iterable[dict[str, Any]]) -> int:
+    """Insert rows or replace those whose id is known; returns how many are new."""
+    new = 0
+    for row in rows:
+        if not c.execute(update(table).where(table.c.id == row["id"]).values(row)).rowcount:
+            c.execute(insert(table).values(row))
+            new += 1
+    return new
 
 
 def set_subscriber_state(c: Connection, id: str, state: str) -> bool:
@@ -211,37 +207,44 @@ def set_subscriber_state(c: Connection, id: str, state: str) -> bool:
 # --- reading -----------------------------------------------------------------------------------
 
 
-def districts(c: Connection) -> list[District]:
-    return [_district_of(row.record) for row in c.execute(select(district).order_by(district.c.id))]
+def districts(c: Connection, as_of: datetime) -> list[District]:
+    """Districts as they were known at a moment, by id."""
+    newest = versions.newest(district_version, as_of).order_by(district_version.c.id)
+    return [_district_of(row.record) for row in c.execute(newest)]
 
 
-def get_district(c: Connection, id: str) -> District:
-    """One district; NotFound says which there are."""
-    row = c.execute(select(district).where(district.c.id == id)).one_or_none()
-    if row is None:
-        known = ", ".join(found.id for found in districts(c)) or "none yet; take a district file first"
-        raise NotFound(f"there is no district {id!r} (there is: {known})")
-    return _district_of(row.record)
+def get_district(c: Connection, id: str, as_of: datetime) -> District:
+    """One district as it was known at a moment; NotFound says which there are, or since when it is known."""
+    newest = versions.newest(district_version, as_of).where(district_version.c.id == id)
+    row = c.execute(newest).one_or_none()
+    if row is not None:
+        return _district_of(row.record)
+    since = c.execute(select(func.min(district_version.c.knowable_from)).where(district_version.c.id == id)).scalar()
+    if since is not None:
+        raise NotFound(f"district {id!r} is known since {since:%Y-%m-%d %H:%M} UTC; nothing can be said of it before")
+    known = ", ".join(found.id for found in districts(c, as_of)) or "none yet; take a district file first"
+    raise NotFound(f"there is no district {id!r} (there is: {known})")
 
 
-def postcodes(c: Connection, district_id: str) -> list[Postcode]:
-    rows = c.execute(select(postcode).where(postcode.c.district == district_id).order_by(postcode.c.code))
-    return [Postcode(row.district, row.code, row.name, place_of(row)) for row in rows]
+def postcodes(c: Connection, district_id: str, as_of: datetime) -> list[Postcode]:
+    """Postcodes as they were known at a moment, by code."""
+    newest = versions.newest(postcode, as_of).where(postcode.c.district == district_id).order_by(postcode.c.code)
+    return [Postcode(row.district, row.code, row.name, place_of(row)) for row in c.execute(newest)]
 
 
-def holdings(c: Connection, district_id: str, registered_by: date) -> list[Holding]:
-    """Holdings registered on or before a day."""
-    rows = c.execute(
-        select(holding)
-        .where(holding.c.district == district_id, holding.c.registered_on <= registered_by)
-        .order_by(holding.c.id)
+def holdings(c: Connection, district_id: str, as_of: datetime, registered_by: date) -> list[Holding]:
+    """Holdings registered on or before a day, as they were known at a moment, by id."""
+    table = holding_version.c
+    newest = versions.newest(holding_version, as_of).where(
+        table.district == district_id, table.registered_on <= registered_by
     )
+    rows = c.execute(newest.order_by(table.id))
     return [Holding(row.id, row.district, row.name, row.registered_on) for row in rows]
 
 
 def paddocks(c: Connection, district_id: str, as_of: datetime) -> list[Paddock]:
     """Paddocks as they were known at a moment, by id."""
-    newest = _newest_paddocks(as_of).where(paddock.c.district == district_id).order_by(paddock.c.id)
+    newest = versions.newest(paddock, as_of).where(paddock.c.district == district_id).order_by(paddock.c.id)
     return [paddock_of(row) for row in c.execute(newest)]
 
 
@@ -261,14 +264,6 @@ def subscribers(c: Connection, district_id: str, state: str | None = "confirmed"
 def get_subscriber(c: Connection, id: str) -> Subscriber | None:
     row = c.execute(select(subscriber).where(subscriber.c.id == id)).one_or_none()
     return None if row is None else _subscriber_of(row)
-
-
-def _newest_paddocks(as_of: datetime | None = None) -> Any:
-    versions = select(paddock.c.id, func.max(paddock.c.version).label("version")).group_by(paddock.c.id)
-    if as_of is not None:
-        versions = versions.where(paddock.c.knowable_from <= as_of)
-    newest = versions.subquery()
-    return select(paddock).join(newest, and_(paddock.c.id == newest.c.id, paddock.c.version == newest.c.version))
 
 
 def paddock_of(row: Row[Any]) -> Paddock:

@@ -21,7 +21,6 @@ from sqlalchemy import (
     Integer,
     LargeBinary,
     Row,
-    Select,
     String,
     Table,
     insert,
@@ -29,6 +28,7 @@ from sqlalchemy import (
 )
 
 from rules.records import Observation, Why
+from service.store import versions
 from service.store.base import UtcTime, metadata
 from service.store.network import place_of
 from service.store.observation_digest import content_digest
@@ -101,7 +101,7 @@ def read(
     last_day: date | None = None,
 ) -> list[Observation]:
     """The newest version knowable at `as_of` of each report of a district, by key; days are inclusive."""
-    query = _newest(as_of).where(observation.c.district == district)
+    query = versions.newest(observation, as_of).where(observation.c.district == district)
     if pest is not None:
         query = query.where(observation.c.pest == pest)
     if first_day is not None:
@@ -117,16 +117,6 @@ def get(c: Connection, key: str, version: int) -> Observation | None:
     query = select(observation).where(observation.c.key == key, observation.c.version == version)
     row = c.execute(query).one_or_none()
     return None if row is None else _record_of(row)
-
-
-def _newest(as_of: datetime) -> Select[Any]:
-    newer = observation.alias("newer")
-    replaced = select(newer.c.key).where(
-        newer.c.key == observation.c.key,
-        newer.c.version > observation.c.version,
-        newer.c.knowable_from <= as_of,
-    )
-    return select(observation).where(observation.c.knowable_from <= as_of, ~replaced.exists())
 
 
 _SAME_IN_BOTH = [

@@ -1,8 +1,9 @@
 """Stations, their days, and the blocks of cell days worked out from them.
 
-Station days are only ever added to: values that differ from the newest known ones are a correction and
-become the next version. A correction is never knowable before the version it corrects, so what was said
-on the strength of the older values can be said again.
+Stations and their days are only ever added to, and a read names the moment it wants them as known at:
+values that differ from the newest known ones are a correction and become the next version. A correction is
+never knowable before the version it corrects, so what was said on the strength of the older values can be
+said again.
 """
 
 from collections.abc import Iterable, Sequence
@@ -20,10 +21,10 @@ from sqlalchemy import (
     Integer,
     LargeBinary,
     Row,
+    Select,
     String,
     Table,
     and_,
-    func,
     insert,
     select,
 )
@@ -31,13 +32,17 @@ from sqlalchemy.dialects import postgresql, sqlite
 
 from rules.digests import digest
 from rules.records import Station, StationDay
+from service.store import versions
 from service.store.base import UtcTime, metadata
-from service.store.network import place_columns, place_of, save
+from service.store.network import flat, place_columns, place_of
 
-station = Table(
-    "station",
+station = Table("station", metadata, Column("id", String, primary_key=True))  # what other rows refer to
+
+station_version = Table(
+    "station_version",
     metadata,
-    Column("id", String, primary_key=True),
+    Column("id", ForeignKey("station.id"), primary_key=True),
+    *versions.columns(),
     Column("district", ForeignKey("district.id"), nullable=False, index=True),
     Column("name", String, nullable=False),
     *place_columns(),
@@ -86,20 +91,20 @@ class Block:
 # --- stations and their days -------------------------------------------------------------------
 
 
-def save_stations(c: Connection, records: Sequence[Station]) -> int:
-    """Add stations or replace those whose id is known; returns how many are new."""
-    rows = [
-        {name: getattr(record, name) for name in ("id", "district", "name", "attribution")}
-        | {name: getattr(record.place, name) for name in record.place.__dataclass_fields__}
-        for record in records
-    ]
-    return save(c, station, rows)
+def save_stations(c: Connection, records: Sequence[Station], knowable_from: datetime) -> int:
+    """Add a version of each station that differs from what is known; returns how many were added."""
+    versions.add_ids(c, station, (record.id for record in records))
+    return versions.add(c, station_version, map(flat, records), knowable_from)
 
 
-def stations(c: Connection, district: str) -> list[Station]:
-    """The stations of a district, by id."""
-    rows = c.execute(select(station).where(station.c.district == district).order_by(station.c.id))
+def stations(c: Connection, district: str, as_of: datetime) -> list[Station]:
+    """The stations of a district as they were known at a moment, by id."""
+    rows = c.execute(_stations(district, as_of).order_by(station_version.c.id))
     return [Station(row.id, row.district, row.name, place_of(row), row.attribution) for row in rows]
+
+
+def _stations(district: str, as_of: datetime) -> Select[Any]:
+    return versions.newest(station_version, as_of).where(station_version.c.district == district)
 
 
 def content_digest(record: StationDay) -> str:
@@ -148,21 +153,11 @@ def newest_known(c: Connection, records: Iterable[StationDay]) -> dict[tuple[str
 
 def station_days(c: Connection, district: str, as_of: datetime, first_day: date, last_day: date) -> list[StationDay]:
     """The district's station days as they were known at a moment, by station and day."""
-    within = and_(
-        station.c.district == district,
-        station_day.c.day.between(first_day, last_day),
-        station_day.c.knowable_from <= as_of,
+    of_district = _stations(district, as_of).with_only_columns(station_version.c.id)
+    query = versions.newest(station_day, as_of).where(
+        station_day.c.station.in_(of_district), station_day.c.day.between(first_day, last_day)
     )
-    newest = (
-        select(station_day.c.station, station_day.c.day, func.max(station_day.c.version).label("version"))
-        .join(station, station.c.id == station_day.c.station)
-        .where(within)
-        .group_by(station_day.c.station, station_day.c.day)
-        .subquery()
-    )
-    same = and_(*(station_day.c[name] == newest.c[name] for name in ("station", "day", "version")))
-    query = select(station_day).join(newest, same).order_by(station_day.c.station, station_day.c.day)
-    return [_day_of(row) for row in c.execute(query)]
+    return [_day_of(row) for row in c.execute(query.order_by(station_day.c.station, station_day.c.day))]
 
 
 def get_station_day(c: Connection, station_id: str, day: date, version: int) -> StationDay | None:

@@ -39,9 +39,9 @@ def cell_days(store: Store, district: District, as_of: datetime, first_day: date
         raise ValueError(f"the days run backwards: {first_day} to {last_day}")
     months = _months(first_day, last_day)
     with store.reading() as c:
-        stations = weather.stations(c, district.id)
+        stations = weather.stations(c, district.id, as_of)
         known = weather.station_days(c, district.id, as_of, months[0], _following(months[-1]) - timedelta(days=1))
-        inhabited = _inhabited(network.paddocks(c, district.id, as_of), network.postcodes(c, district.id))
+        inhabited = _inhabited(network.paddocks(c, district.id, as_of), network.postcodes(c, district.id, as_of))
         if not stations or not inhabited:
             return None
         field = cells.field(stations, inhabited)

@@ -34,8 +34,8 @@ def take_station_days(store: Store, path: Path, *, clock: Clock, history: bool =
     with store.reading() as c:
         zones = {
             station.id: district.zone
-            for district in network.districts(c)
-            for station in weather.stations(c, district.id)
+            for district in network.districts(c, now)
+            for station in weather.stations(c, district.id, now)
         }
     found = [_record(row, zones, now, history) for row in table if not row.refusals]
     rows.once(table, lambda row: (row.given("station"), row.given("day")), "day")

@@ -1,7 +1,7 @@
 """Network files on both stores: what is taken, what is refused and why, and that taking twice changes nothing."""
 
 from dataclasses import dataclass
-from datetime import date, timedelta
+from datetime import date, datetime, timedelta
 from pathlib import Path
 from time import process_time
 
@@ -90,8 +90,9 @@ class Desk:
             return [
                 c.execute(table.select().order_by(*table.primary_key)).all()
                 for table in (
-                    *(network.district, network.postcode, network.holding, network.paddock, network.person),
-                    *(network.subscriber, weather.station),
+                    *(network.district, network.district_version, network.postcode, network.holding),
+                    *(network.holding_version, network.paddock, network.person, network.subscriber),
+                    *(weather.station, weather.station_version),
                 )
             ]
 
@@ -130,11 +131,11 @@ def test_what_was_taken_is_what_the_files_say(desk: Desk) -> None:
     for text in (PADDOCKS, SUBSCRIBERS, STATIONS):
         desk.take(text)
     with desk.store.reading() as c:
-        district = network.get_district(c, "north")
+        district = network.get_district(c, "north", NOW)
         assert (district.hotline, district.holdings_to_hide, district.cut_off) == ("+00 000 000", 5, "Tue 12:00")
         names = ("khapra beetle", "Trogoderma granarium")
         assert district.reportables == (Reportable("khapra", names, date(2026, 1, 1)),)
-        assert network.postcodes(c, "north")[0].place == place(-46, 100, None, 12.5)
+        assert network.postcodes(c, "north", NOW)[0].place == place(-46, 100, None, 12.5)
         creek, hill = network.paddocks(c, "north", NOW)
         assert (creek.crop, creek.last_crop, creek.sown_on, creek.up_on) == (
             *("canola", "wheat"),
@@ -153,7 +154,7 @@ def test_what_was_taken_is_what_the_files_say(desk: Desk) -> None:
         assert (tom.crops, tom.paddocks, tom.holding, tom.person) == (("canola", "wheat"), ("p1",), "h1", "tom")
         assert (ann.crops, ann.paddocks, ann.language, ann.state) == ((), (), "en", "confirmed")
         assert [person.roles for person in network.people(c, "north")] == [("coordinator", "officer"), ("grower",)]
-        assert weather.stations(c, "north") == [
+        assert weather.stations(c, "north", NOW) == [
             Station("w1", "north", "Kelp", place(-46.2, 100.2, None, 8.0), "the bank's own")
         ]
 
@@ -166,6 +167,31 @@ def test_a_changed_paddock_gains_a_version_and_the_others_none(desk: Desk) -> No
     with desk.store.reading() as c:
         assert [paddock.sown_on for paddock in network.paddocks(c, "north", NOW)] == [date(2026, 4, 20), None]
         assert network.paddocks(c, "north", later)[1].sown_on == date(2026, 5, 12)
+
+
+def test_a_changed_network_is_known_from_when_it_was_taken(desk: Desk) -> None:
+    desk.take(STATIONS)
+    later = NOW + timedelta(days=1)
+    changes = {
+        "district.toml": DISTRICT.replace('"south-eastern"', '"western"') + SOUTH,
+        "a.csv": POSTCODES.replace("Kelp Landing", "Kelp Point"),
+        "b.csv": HOLDINGS.replace("Kelp Farm,2020-01-01", "Kelp Farm,2020-02-01"),
+        "f.csv": STATIONS.replace("-46.2", "-46.3"),
+    }
+    for name, text in changes.items():
+        assert desk.take(text, name, later)["changed"] == 1, name
+
+    def known(at: datetime) -> tuple[object, ...]:
+        with desk.store.reading() as c:
+            return (
+                network.get_district(c, "north", at).temperature_type,
+                network.postcodes(c, "north", at)[0].name,
+                network.holdings(c, "north", at, date(2026, 1, 1))[0].registered_on,
+                weather.stations(c, "north", at)[0].place.latitude,
+            )
+
+    assert known(NOW) == ("south-eastern", "Kelp Landing", date(2020, 1, 1), -46.2)
+    assert known(later) == ("western", "Kelp Point", date(2020, 2, 1), -46.3)
 
 
 # --- districts -----------------------------------------------------------------------------------

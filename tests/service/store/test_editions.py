@@ -10,7 +10,7 @@ from rules.slip import Edition, Line, Slip
 from service.errors import NotFound, WrongState
 from service.store import editions, network
 from service.store.base import Store
-from tests.builders import NOW, a_district, a_holding, a_subscriber
+from tests.builders import FOUNDED, NOW, a_district, a_holding, a_subscriber
 from tests.service.editions import cast
 
 WEEK = Edition("north-2026-W20", "north", "2026-W20", NOW, NOW, "ivy", cast.HEAD, hashes={"catalogue": "c1"})
@@ -24,8 +24,8 @@ LATER = NOW + timedelta(hours=1)
 def drafted(store: Store) -> Store:
     """A store with a drafted edition for seven readers."""
     with store.writing() as c:
-        network.save_district(c, a_district())
-        network.save_holdings(c, [a_holding("h0")])
+        network.save_district(c, a_district(), FOUNDED)
+        network.save_holdings(c, [a_holding("h0")], FOUNDED)
         network.save_subscribers(c, [a_subscriber(id) for id in COMPOSED.slips])
         editions.save_draft(c, WEEK, COMPOSED.statements.values(), COMPOSED.slips.values(), READERS)
     return store

@@ -11,7 +11,7 @@ from rules.records import Ask
 from rules.slip import Edition, Head, Slip, Statement, statement_hash
 from service.store import editions, network, observations, schema
 from service.store.base import Store, metadata
-from tests.builders import NOW, TODAY, a_district, a_holding, a_paddock, a_person, a_subscriber, an_observation
+from tests.builders import FOUNDED, NOW, TODAY, a_district, a_holding, a_paddock, a_person, a_subscriber, an_observation
 
 
 @pytest.fixture
@@ -29,8 +29,8 @@ def fill(store: Store) -> None:
         "north-2026-W20", "north", "2026-W20", NOW, NOW, "ivy", Head("north-2026-W20", "North Bank", TODAY, 5, False)
     )
     with store.writing() as c:
-        network.save_district(c, a_district())
-        network.save_holdings(c, [a_holding()])
+        network.save_district(c, a_district(), FOUNDED)
+        network.save_holdings(c, [a_holding()], FOUNDED)
         network.save_people(c, [a_person()])
         network.save_paddocks(c, [a_paddock(), a_paddock("p2", crop="canola")], NOW)
         network.save_subscribers(c, [a_subscriber(holding="h1", person="ivy"), a_subscriber("s2")])
@@ -73,7 +73,7 @@ def test_a_second_revision_holds_what_it_added(empty: Store) -> None:
     """The step back must really take the constraint away, or the test above compares nothing."""
     schema.upgrade(empty)
     with empty.writing() as c:
-        network.save_district(c, a_district())
+        network.save_district(c, a_district(), FOUNDED)
     with pytest.raises(IntegrityError), empty.writing() as c:
         network.save_subscribers(c, [a_subscriber(state="elsewhere")])
     schema.migrate(empty, "-1", down=True)
@@ -84,4 +84,4 @@ def test_a_second_revision_holds_what_it_added(empty: Store) -> None:
 def test_foreign_keys_hold_again_after_a_step(empty: Store) -> None:
     schema.upgrade(empty)
     with pytest.raises(IntegrityError), empty.writing() as c:
-        network.save_holdings(c, [a_holding(district="nowhere")])
+        network.save_holdings(c, [a_holding(district="nowhere")], FOUNDED)

@@ -6,7 +6,7 @@ from datetime import date, timedelta
 from rules.records import Ask, Evidence, Signal
 from service.store import network, signals
 from service.store.base import Store
-from tests.builders import NOW, a_district
+from tests.builders import FOUNDED, NOW, a_district
 
 HATCH = Signal(
     id="b" * 32,
@@ -29,7 +29,7 @@ COUNT = replace(HATCH, id="a" * 32, kind="threshold", ask=Ask.COUNT, paddock="p1
 
 def _with_district(store: Store) -> None:
     with store.writing() as c:
-        network.save_district(c, a_district())
+        network.save_district(c, a_district(), FOUNDED)
 
 
 def test_signals_come_back_as_they_went_in_and_in_order(store: Store) -> None:

@@ -9,7 +9,7 @@ from rules.records import Station, StationDay
 from service.places import place
 from service.store import network, weather
 from service.store.base import Store
-from tests.builders import LAT, LON, NOW, a_district
+from tests.builders import FOUNDED, LAT, LON, NOW, a_district
 
 DAY = date(2026, 5, 1)
 LATER = NOW + timedelta(days=3)
@@ -30,11 +30,10 @@ def a_day(station: str = "w1", day: date = DAY, **changes) -> StationDay:
 @pytest.fixture
 def ready(store: Store) -> Store:
     with store.writing() as c:
-        network.save_district(c, a_district())
-        network.save_district(c, a_district(id="south"))
-        weather.save_stations(
-            c, [a_station("w2"), a_station("w1", attribution="the bank's own"), a_station("x", district="south")]
-        )
+        network.save_district(c, a_district(), FOUNDED)
+        network.save_district(c, a_district(id="south"), FOUNDED)
+        ours = [a_station("w2"), a_station("w1", attribution="the bank's own"), a_station("x", district="south")]
+        weather.save_stations(c, ours, FOUNDED)
     return store
 
 
@@ -48,11 +47,25 @@ def known(store: Store, as_of, first=DAY, last=DAY, district="north") -> list[St
         return weather.station_days(c, district, as_of, first, last)
 
 
-def test_stations_come_back_by_id_and_a_known_one_is_replaced(ready: Store) -> None:
+def test_stations_come_back_by_id_as_they_were_known(ready: Store) -> None:
+    first = [a_station("w1", attribution="the bank's own"), a_station("w2")]
     with ready.writing() as c:
-        assert weather.stations(c, "north") == [a_station("w1", attribution="the bank's own"), a_station("w2")]
-        assert weather.save_stations(c, [a_station("w2", name="Moved"), a_station("w3")]) == 1
-        assert [station.name for station in weather.stations(c, "north")] == ["Station w1", "Moved", "Station w3"]
+        assert weather.stations(c, "north", NOW) == first
+        assert weather.save_stations(c, first, LATER) == 0
+        assert weather.save_stations(c, [a_station("w2", name="Moved"), a_station("w3")], LATER) == 2
+        later = [station.name for station in weather.stations(c, "north", LATER)]
+        assert later == ["Station w1", "Moved", "Station w3"]
+        assert weather.stations(c, "north", LATER - timedelta(microseconds=1)) == first
+        assert weather.stations(c, "north", FOUNDED - timedelta(microseconds=1)) == []
+
+
+def test_the_days_of_a_station_are_read_where_it_was_known_to_stand(ready: Store) -> None:
+    add(ready, a_day("w2"))
+    with ready.writing() as c:
+        assert weather.save_stations(c, [a_station("w2", district="south")], LATER) == 1
+    assert known(ready, NOW) == [a_day("w2")]
+    assert known(ready, LATER) == []
+    assert known(ready, LATER, district="south") == [a_day("w2")]
 
 
 def test_the_same_values_add_nothing(ready: Store) -> None:

@@ -12,7 +12,7 @@ from service.places import EARTH_RADIUS_KM, centre, place
 from service.store import network, weather
 from service.store.base import Store
 from service.weather import blocks, cell_days, cells
-from tests.builders import LAT, LON, NOW, a_district, a_holding, a_paddock, a_postcode
+from tests.builders import FOUNDED, LAT, LON, NOW, a_district, a_holding, a_paddock, a_postcode
 
 FIRST, LAST = date(2026, 4, 28), date(2026, 5, 3)  # touches two months
 LATER = NOW + timedelta(days=2)
@@ -40,11 +40,11 @@ def add(store: Store, *records: StationDay) -> None:
 def ready(store: Store) -> Store:
     """One paddock at 10 m, two stations at 10 m, 10 and 20 km away, and a postcode a degree to the west."""
     with store.writing() as c:
-        network.save_district(c, DISTRICT)
-        network.save_holdings(c, [a_holding()])
+        network.save_district(c, DISTRICT, FOUNDED)
+        network.save_holdings(c, [a_holding()], FOUNDED)
         network.save_paddocks(c, [a_paddock()], NOW)
-        network.save_postcodes(c, [a_postcode(place=place(LAT, LON - 1))])
-        weather.save_stations(c, [a_station("a", 10, 10.0), a_station("b", -20, 10.0)])
+        network.save_postcodes(c, [a_postcode(place=place(LAT, LON - 1))], FOUNDED)
+        weather.save_stations(c, [a_station("a", 10, 10.0), a_station("b", -20, 10.0)], FOUNDED)
     days = [FIRST + timedelta(days=n) for n in range(6)]
     add(store, *(a_day("a", day, 10.0, 20.0, 5.0) for day in days), *(a_day("b", day, 20.0, 30.0, 0.0) for day in days))
     return store
@@ -81,20 +81,20 @@ def test_days_and_cells_by_hand(ready: Store) -> None:
 
 def test_without_stations_or_places_there_is_no_weather(store: Store) -> None:
     with store.writing() as c:
-        network.save_district(c, DISTRICT)
-        network.save_postcodes(c, [a_postcode()])
+        network.save_district(c, DISTRICT, FOUNDED)
+        network.save_postcodes(c, [a_postcode()], FOUNDED)
     assert cell_days(store, DISTRICT, NOW, FIRST, LAST) is None
     with store.writing() as c:
-        network.save_district(c, a_district(id="south"))
-        weather.save_stations(c, [Station("x", "south", "x", place(LAT, LON))])
+        network.save_district(c, a_district(id="south"), FOUNDED)
+        weather.save_stations(c, [Station("x", "south", "x", place(LAT, LON))], FOUNDED)
     assert cell_days(store, a_district(id="south"), NOW, FIRST, LAST) is None
 
 
 def test_stations_without_a_day_give_missing_and_never_zero(store: Store) -> None:
     with store.writing() as c:
-        network.save_district(c, DISTRICT)
-        network.save_postcodes(c, [a_postcode()])
-        weather.save_stations(c, [a_station("a", 10)])
+        network.save_district(c, DISTRICT, FOUNDED)
+        network.save_postcodes(c, [a_postcode()], FOUNDED)
+        weather.save_stations(c, [a_station("a", 10)], FOUNDED)
     found = cell_days(store, DISTRICT, NOW, FIRST, LAST)
     assert np.isnan(found.tmin).all()
     assert np.isnan(found.rain).all()
@@ -151,12 +151,13 @@ def test_a_month_that_has_not_changed_is_not_worked_out_twice(ready: Store, monk
 def test_a_changed_height_makes_other_temperature_blocks(ready: Store) -> None:
     before = read(ready)
     with ready.writing() as c:
-        weather.save_stations(c, [a_station("a", 10, 210.0)])
-    after = read(ready)
+        weather.save_stations(c, [a_station("a", 10, 210.0)], LATER)
+    after = read(ready, LATER)
     # by hand: a is now 200 m above the paddock: 6.5 * 0.2 = 1.3 °C, times its share 0.8
     here = at_home(after)
     assert after.tmin[:, here] - before.tmin[:, here] == pytest.approx([1.04] * 6, abs=1e-4)
     assert after.rain.tobytes() == before.rain.tobytes()
+    assert read(ready).digest == before.digest, "what was known before must stay"
 
 
 @pytest.mark.parametrize("harm", ["flip", "cut", "swap", "empty"])
@@ -189,13 +190,14 @@ def test_a_row_altered_behind_the_store_changes_the_digest(ready: Store) -> None
     assert read(ready).digest != before.digest
 
 
-def test_a_reader_who_joins_changes_nothing_and_a_new_paddock_only_the_future(ready: Store) -> None:
+def test_a_reader_who_joins_changes_nothing_and_a_new_place_only_the_future(ready: Store) -> None:
     before = read(ready)
     far = a_paddock("p2", place=place(LAT + 0.5, LON))
     with ready.writing() as c:
         network.save_paddocks(c, [far], LATER)
+        network.save_postcodes(c, [a_postcode(code="9002", place=place(LAT, LON + 1))], LATER)
     assert read(ready).digest == before.digest
-    assert len(read(ready, LATER).cells) == len(before.cells) + 7
+    assert len(read(ready, LATER).cells) == len(before.cells) + 14  # each with its six neighbours
 
 
 def test_days_that_run_backwards_are_refused(ready: Store) -> None:

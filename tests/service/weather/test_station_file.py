@@ -12,7 +12,7 @@ from service.places import place
 from service.store import network, weather
 from service.store.base import Store
 from service.weather import take_station_days
-from tests.builders import LAT, LON, NOW, a_district
+from tests.builders import FOUNDED, LAT, LON, NOW, a_district
 
 LATER = NOW + timedelta(days=3)
 
@@ -20,8 +20,8 @@ LATER = NOW + timedelta(days=3)
 @pytest.fixture
 def ready(store: Store) -> Store:
     with store.writing() as c:
-        network.save_district(c, a_district())
-        weather.save_stations(c, [Station("kelp", "north", "Kelp", place(LAT, LON))])
+        network.save_district(c, a_district(), FOUNDED)
+        weather.save_stations(c, [Station("kelp", "north", "Kelp", place(LAT, LON))], FOUNDED)
     return store
 
 

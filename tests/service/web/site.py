@@ -21,7 +21,7 @@ from service.store import network
 from service.store.base import Store
 from service.tokens import Tokens
 from service.web.app import make_app, serving
-from tests.builders import NOW, a_district, a_subscriber
+from tests.builders import FOUNDED, NOW, a_district, a_subscriber
 from tests.service.editions.views import a_view
 
 KEY = "k" * 40
@@ -109,7 +109,7 @@ def running(app: FastAPI) -> Iterator[str]:
 def a_site(store: Store, **options: Any) -> Iterator[Site]:
     """A site with one confirmed reader."""
     with store.writing() as c:
-        network.save_district(c, a_district())
+        network.save_district(c, a_district(), FOUNDED)
         network.save_subscribers(c, [a_subscriber()])
     tokens, clock = Tokens([KEY]), SetClock(NOW)
     readers = Readers(store, tokens)
