@@ -10,6 +10,7 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+import numpy.typing as npt
 import pyarrow as pa
 import pyarrow.compute as pc
 from sqlalchemy import Connection
@@ -26,7 +27,7 @@ from service.intake.incoming import Builder
 from service.intake.refusals import RowsRefused
 from service.intake.sheet import Sheet
 from service.store import observation_load, reportables
-from service.store.base import Store
+from service.store.base import Store, micros
 from service.store.reportables import Case
 
 
@@ -216,11 +217,20 @@ def _add(c: Connection, taking: _Taking, table: pa.Table, builder: Builder, revi
     wanted = new | changed if revise else new
     table = table.drop_columns("row")
     if revise and changed.any():
-        table = table.append_column("version", pa.array(held.newest + 1))
+        table = _as_next_versions(table, held.newest, changed, taking.frame)
     if not wanted.all():
         table = table.filter(pa.array(wanted))
     observation_load.load(c, table, builder.constants(table.column_names))
     return {"new": int(new.sum()), "revised": int(changed.sum()) if revise else 0, "same": int(held.same.sum())}
+
+
+def _as_next_versions(table: pa.Table, newest: npt.NDArray[np.int64], changed: Mask, frame: Frame) -> pa.Table:
+    """Number the versions. A change is knowable from now, in history too: what was said before stays so."""
+    table = table.append_column("version", pa.array(newest + 1))
+    if "knowable_from" not in table.column_names:
+        return table
+    since = pc.if_else(pa.array(changed), micros(frame.now), table["knowable_from"])
+    return table.set_column(table.column_names.index("knowable_from"), "knowable_from", since)
 
 
 _CHANGED = "is known and said something else; mend it, or take it with --revise to make this its next version"

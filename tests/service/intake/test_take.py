@@ -342,6 +342,22 @@ def test_history_is_knowable_from_its_own_dates(store: Store, tmp_path: Path) ->
     assert all(each.arrived_at == each.knowable_from for each in (stated, assumed, recent))
 
 
+def test_a_change_to_history_does_not_change_what_was_known(store: Store, tmp_path: Path) -> None:
+    settle(store)
+    take(store, write(tmp_path, [row(day="2025-05-10"), row(record_id="2", day="2025-05-10")]), history=True)
+    changed = write(tmp_path, [row(day="2025-05-10", note="x"), row(record_id="3", day="2025-05-10")])
+    later = SetClock(NOW + timedelta(days=1))
+    assert take(store, changed, history=True, revise=True, clock=later) == NONE | {"new": 1, "revised": 1}
+    with store.reading() as c:
+        first, second = (observations.get(c, "csv:1", version) for version in (1, 2))
+        third = observations.get(c, "csv:3", 1)
+    assert first is not None
+    assert second is not None
+    assert third is not None
+    assert (first.knowable_from, second.knowable_from) == (third.knowable_from, later.now())
+    assert (second.note, second.version) == ("x", 2)
+
+
 def test_progress_is_told_in_rows(store: Store, tmp_path: Path) -> None:
     settle(store)
     told: list[tuple[int, int | None, str]] = []
