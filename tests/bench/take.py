@@ -27,7 +27,7 @@ from service.store import network, schema
 from service.store.base import Store
 from tests import postgres
 from tests.bench.anchors import row
-from tests.builders import LAT, LON, a_district, a_holding, a_person, a_postcode
+from tests.builders import LAT, LON, NOW, a_district, a_holding, a_person, a_postcode
 
 ROWS, ROUNDS = 1_000_000, 3
 DISTRICTS = [f"d{n}" for n in range(4)]
@@ -75,11 +75,10 @@ def _prepare(url: str) -> None:
     schema.upgrade(store)
     with store.writing() as c:
         for at, id in enumerate(DISTRICTS):
-            network.save_district(c, a_district(id=id, latitude=LAT + 0.5, longitude=LON + at + 0.5))
-            network.save_postcodes(
-                c, [a_postcode(district=id, code=f"900{at}", place=place(LAT + 0.5, LON + at + 0.5))]
-            )
-            network.save_holdings(c, [a_holding(f"h{at}", district=id)])
+            lat, lon = LAT + 0.5, LON + at + 0.5
+            network.save_district(c, a_district(id=id, latitude=lat, longitude=lon), NOW)
+            network.save_postcodes(c, [a_postcode(district=id, code=f"900{at}", place=place(lat, lon))], NOW)
+            network.save_holdings(c, [a_holding(f"h{at}", district=id)], NOW)
         network.save_people(c, [a_person(id, district="d0") for id in PEOPLE])
     store.close()
 

@@ -1,7 +1,7 @@
 """A small network and observation files for the tests of intake."""
 
 from collections.abc import Mapping, Sequence
-from datetime import date
+from datetime import date, timedelta
 from pathlib import Path
 from typing import Any
 
@@ -14,6 +14,7 @@ from service.store.base import Store
 from tests.builders import LAT, LON, NOW, a_district, a_holding, a_paddock, a_person, a_postcode
 
 CLOCK = SetClock(NOW)
+SINCE = NOW - timedelta(days=365)  # when the network was taken
 LISTED = (
     Reportable("false_moth", ("false kelp moth", "Imago fabulosa", "élan weevil"), date(2026, 1, 1)),
     Reportable("ghost_beetle", ("ghost beetle",), date(2026, 1, 1)),
@@ -32,13 +33,13 @@ GOOD = {
 def settle(store: Store, *, south: bool = False) -> None:
     """Fill a store with one district that lists two invented pests; and one far south of it that lists none."""
     with store.writing() as c:
-        network.save_district(c, a_district(reportables=LISTED))
-        network.save_postcodes(c, [a_postcode()])
-        network.save_holdings(c, [a_holding()])
+        network.save_district(c, a_district(reportables=LISTED), SINCE)
+        network.save_postcodes(c, [a_postcode()], SINCE)
+        network.save_holdings(c, [a_holding()], SINCE)
         network.save_people(c, [a_person(), a_person("ada")])
-        network.save_paddocks(c, [a_paddock(place=place(LAT + 0.1, LON, elevation_m=10.0))], NOW)
+        network.save_paddocks(c, [a_paddock(place=place(LAT + 0.1, LON, elevation_m=10.0))], SINCE)
         if south:
-            network.save_district(c, a_district(id="south", name="South Bank", latitude=-60.0))
+            network.save_district(c, a_district(id="south", name="South Bank", latitude=-60.0), SINCE)
 
 
 def csv_of(rows: Sequence[Mapping[str, str]]) -> str:

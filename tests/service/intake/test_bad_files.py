@@ -12,7 +12,7 @@ from service.intake import csv_file
 from service.store import network
 from service.store.base import Store
 from tests.builders import LAT, LON, a_district
-from tests.service.intake.network import CLOCK, all_of, csv_of, row, settle, take, write
+from tests.service.intake.network import CLOCK, SINCE, all_of, csv_of, row, settle, take, write
 
 TEXT = csv_of([row(note="ünder")])
 
@@ -212,7 +212,7 @@ def test_swapped_coordinates_that_are_on_the_globe_are_named_as_swapped(store: S
     """A district at 46° S, 80° E: both numbers could be latitudes."""
     settle(store, south=True)
     with store.writing() as c:
-        network.save_district(c, a_district(id="west", longitude=80.0))
+        network.save_district(c, a_district(id="west", longitude=80.0), SINCE)
     path = write(tmp_path, [row(latitude="80", longitude="-46", district="west")])
     with pytest.raises(BadInput) as error:
         take(store, path)
