@@ -29,9 +29,10 @@ def upgrade() -> None:
     op.create_table(
         "district",
         sa.Column("id", sa.String(), nullable=False),
-        sa.Column("name", sa.String(), nullable=False),
-        sa.Column("record", sa.JSON(), nullable=False),
         sa.PrimaryKeyConstraint("id", name=op.f("pk_district")),
+    )
+    op.create_table(
+        "holding", sa.Column("id", sa.String(), nullable=False), sa.PrimaryKeyConstraint("id", name=op.f("pk_holding"))
     )
     op.create_table(
         "job_run",
@@ -134,6 +135,18 @@ def upgrade() -> None:
         sa.PrimaryKeyConstraint("hash", name=op.f("pk_statement")),
     )
     op.create_table(
+        "station", sa.Column("id", sa.String(), nullable=False), sa.PrimaryKeyConstraint("id", name=op.f("pk_station"))
+    )
+    op.create_table(
+        "district_version",
+        sa.Column("id", sa.String(), nullable=False),
+        sa.Column("version", sa.Integer(), nullable=False),
+        sa.Column("knowable_from", sa.BigInteger(), nullable=False),
+        sa.Column("record", sa.JSON(), nullable=False),
+        sa.ForeignKeyConstraint(["id"], ["district.id"], name=op.f("fk_district_version_id_district")),
+        sa.PrimaryKeyConstraint("id", "version", name=op.f("pk_district_version")),
+    )
+    op.create_table(
         "edition",
         sa.Column("id", sa.String(), nullable=False),
         sa.Column("district", sa.String(), nullable=False),
@@ -160,16 +173,55 @@ def upgrade() -> None:
         batch_op.create_index(batch_op.f("ix_edition_district"), ["district"], unique=False)
 
     op.create_table(
-        "holding",
+        "holding_version",
         sa.Column("id", sa.String(), nullable=False),
+        sa.Column("version", sa.Integer(), nullable=False),
+        sa.Column("knowable_from", sa.BigInteger(), nullable=False),
         sa.Column("district", sa.String(), nullable=False),
         sa.Column("name", sa.String(), nullable=False),
         sa.Column("registered_on", sa.Date(), nullable=False),
-        sa.ForeignKeyConstraint(["district"], ["district.id"], name=op.f("fk_holding_district_district")),
-        sa.PrimaryKeyConstraint("id", name=op.f("pk_holding")),
+        sa.ForeignKeyConstraint(["district"], ["district.id"], name=op.f("fk_holding_version_district_district")),
+        sa.ForeignKeyConstraint(["id"], ["holding.id"], name=op.f("fk_holding_version_id_holding")),
+        sa.PrimaryKeyConstraint("id", "version", name=op.f("pk_holding_version")),
     )
-    with op.batch_alter_table("holding", schema=None) as batch_op:
-        batch_op.create_index(batch_op.f("ix_holding_district"), ["district"], unique=False)
+    with op.batch_alter_table("holding_version", schema=None) as batch_op:
+        batch_op.create_index(batch_op.f("ix_holding_version_district"), ["district"], unique=False)
+
+    op.create_table(
+        "paddock",
+        sa.Column("id", sa.String(), nullable=False),
+        sa.Column("version", sa.Integer(), nullable=False),
+        sa.Column("knowable_from", sa.BigInteger(), nullable=False),
+        sa.Column("holding", sa.String(), nullable=False),
+        sa.Column("district", sa.String(), nullable=False),
+        sa.Column("name", sa.String(), nullable=False),
+        sa.Column("latitude", sa.Float(precision=53), nullable=False),
+        sa.Column("longitude", sa.Float(precision=53), nullable=False),
+        sa.Column("cell", sa.BigInteger(), nullable=False),
+        sa.Column("uncertainty_m", sa.Float(precision=53), nullable=True),
+        sa.Column("elevation_m", sa.Float(precision=53), nullable=True),
+        sa.Column("area_ha", sa.Float(precision=53), nullable=True),
+        sa.Column("crop", sa.String(), nullable=True),
+        sa.Column("sown_on", sa.Date(), nullable=True),
+        sa.Column("up_on", sa.Date(), nullable=True),
+        sa.Column("last_crop", sa.String(), nullable=True),
+        sa.Column("pasture_before", sa.Boolean(), nullable=True),
+        sa.Column("capeweed_before", sa.Boolean(), nullable=True),
+        sa.Column("seed_dressing", sa.Boolean(), nullable=True),
+        sa.Column("dressing_group", sa.String(), nullable=True),
+        sa.Column("grazed", sa.JSON(), nullable=False),
+        sa.Column("flowering", sa.Boolean(), nullable=True),
+        sa.Column("row_spacing_m", sa.Float(precision=53), nullable=True),
+        sa.Column("plants_per_m2", sa.Float(precision=53), nullable=True),
+        sa.Column("enter_leave", sa.Boolean(), nullable=False),
+        sa.ForeignKeyConstraint(["district"], ["district.id"], name=op.f("fk_paddock_district_district")),
+        sa.ForeignKeyConstraint(["holding"], ["holding.id"], name=op.f("fk_paddock_holding_holding")),
+        sa.PrimaryKeyConstraint("id", "version", name=op.f("pk_paddock")),
+    )
+    with op.batch_alter_table("paddock", schema=None) as batch_op:
+        batch_op.create_index(batch_op.f("ix_paddock_cell"), ["cell"], unique=False)
+        batch_op.create_index(batch_op.f("ix_paddock_district"), ["district"], unique=False)
+        batch_op.create_index(batch_op.f("ix_paddock_holding"), ["holding"], unique=False)
 
     op.create_table(
         "person",
@@ -188,6 +240,8 @@ def upgrade() -> None:
         "postcode",
         sa.Column("district", sa.String(), nullable=False),
         sa.Column("code", sa.String(), nullable=False),
+        sa.Column("version", sa.Integer(), nullable=False),
+        sa.Column("knowable_from", sa.BigInteger(), nullable=False),
         sa.Column("name", sa.String(), nullable=False),
         sa.Column("latitude", sa.Float(precision=53), nullable=False),
         sa.Column("longitude", sa.Float(precision=53), nullable=False),
@@ -195,7 +249,7 @@ def upgrade() -> None:
         sa.Column("uncertainty_m", sa.Float(precision=53), nullable=True),
         sa.Column("elevation_m", sa.Float(precision=53), nullable=True),
         sa.ForeignKeyConstraint(["district"], ["district.id"], name=op.f("fk_postcode_district_district")),
-        sa.PrimaryKeyConstraint("district", "code", name=op.f("pk_postcode")),
+        sa.PrimaryKeyConstraint("district", "code", "version", name=op.f("pk_postcode")),
     )
     with op.batch_alter_table("postcode", schema=None) as batch_op:
         batch_op.create_index(batch_op.f("ix_postcode_cell"), ["cell"], unique=False)
@@ -221,8 +275,25 @@ def upgrade() -> None:
         sa.PrimaryKeyConstraint("district", "as_of", "id", name=op.f("pk_signal")),
     )
     op.create_table(
-        "station",
+        "station_day",
+        sa.Column("station", sa.String(), nullable=False),
+        sa.Column("day", sa.Date(), nullable=False),
+        sa.Column("version", sa.Integer(), nullable=False),
+        sa.Column("tmin", sa.Float(precision=53), nullable=True),
+        sa.Column("tmax", sa.Float(precision=53), nullable=True),
+        sa.Column("rain", sa.Float(precision=53), nullable=True),
+        sa.Column("arrived_at", sa.BigInteger(), nullable=False),
+        sa.Column("knowable_from", sa.BigInteger(), nullable=False),
+        sa.Column("arrival_assumed", sa.Boolean(), nullable=False),
+        sa.Column("digest", sa.String(length=32), nullable=False),
+        sa.ForeignKeyConstraint(["station"], ["station.id"], name=op.f("fk_station_day_station_station")),
+        sa.PrimaryKeyConstraint("station", "day", "version", name=op.f("pk_station_day")),
+    )
+    op.create_table(
+        "station_version",
         sa.Column("id", sa.String(), nullable=False),
+        sa.Column("version", sa.Integer(), nullable=False),
+        sa.Column("knowable_from", sa.BigInteger(), nullable=False),
         sa.Column("district", sa.String(), nullable=False),
         sa.Column("name", sa.String(), nullable=False),
         sa.Column("latitude", sa.Float(precision=53), nullable=False),
@@ -231,12 +302,13 @@ def upgrade() -> None:
         sa.Column("uncertainty_m", sa.Float(precision=53), nullable=True),
         sa.Column("elevation_m", sa.Float(precision=53), nullable=True),
         sa.Column("attribution", sa.String(), nullable=True),
-        sa.ForeignKeyConstraint(["district"], ["district.id"], name=op.f("fk_station_district_district")),
-        sa.PrimaryKeyConstraint("id", name=op.f("pk_station")),
+        sa.ForeignKeyConstraint(["district"], ["district.id"], name=op.f("fk_station_version_district_district")),
+        sa.ForeignKeyConstraint(["id"], ["station.id"], name=op.f("fk_station_version_id_station")),
+        sa.PrimaryKeyConstraint("id", "version", name=op.f("pk_station_version")),
     )
-    with op.batch_alter_table("station", schema=None) as batch_op:
-        batch_op.create_index(batch_op.f("ix_station_cell"), ["cell"], unique=False)
-        batch_op.create_index(batch_op.f("ix_station_district"), ["district"], unique=False)
+    with op.batch_alter_table("station_version", schema=None) as batch_op:
+        batch_op.create_index(batch_op.f("ix_station_version_cell"), ["cell"], unique=False)
+        batch_op.create_index(batch_op.f("ix_station_version_district"), ["district"], unique=False)
 
     op.create_table(
         "weather_block",
@@ -321,57 +393,6 @@ def upgrade() -> None:
         )
 
     op.create_table(
-        "paddock",
-        sa.Column("id", sa.String(), nullable=False),
-        sa.Column("version", sa.Integer(), nullable=False),
-        sa.Column("knowable_from", sa.BigInteger(), nullable=False),
-        sa.Column("holding", sa.String(), nullable=False),
-        sa.Column("district", sa.String(), nullable=False),
-        sa.Column("name", sa.String(), nullable=False),
-        sa.Column("latitude", sa.Float(precision=53), nullable=False),
-        sa.Column("longitude", sa.Float(precision=53), nullable=False),
-        sa.Column("cell", sa.BigInteger(), nullable=False),
-        sa.Column("uncertainty_m", sa.Float(precision=53), nullable=True),
-        sa.Column("elevation_m", sa.Float(precision=53), nullable=True),
-        sa.Column("area_ha", sa.Float(precision=53), nullable=True),
-        sa.Column("crop", sa.String(), nullable=True),
-        sa.Column("sown_on", sa.Date(), nullable=True),
-        sa.Column("up_on", sa.Date(), nullable=True),
-        sa.Column("last_crop", sa.String(), nullable=True),
-        sa.Column("pasture_before", sa.Boolean(), nullable=True),
-        sa.Column("capeweed_before", sa.Boolean(), nullable=True),
-        sa.Column("seed_dressing", sa.Boolean(), nullable=True),
-        sa.Column("dressing_group", sa.String(), nullable=True),
-        sa.Column("grazed", sa.JSON(), nullable=False),
-        sa.Column("flowering", sa.Boolean(), nullable=True),
-        sa.Column("row_spacing_m", sa.Float(precision=53), nullable=True),
-        sa.Column("plants_per_m2", sa.Float(precision=53), nullable=True),
-        sa.Column("enter_leave", sa.Boolean(), nullable=False),
-        sa.ForeignKeyConstraint(["district"], ["district.id"], name=op.f("fk_paddock_district_district")),
-        sa.ForeignKeyConstraint(["holding"], ["holding.id"], name=op.f("fk_paddock_holding_holding")),
-        sa.PrimaryKeyConstraint("id", "version", name=op.f("pk_paddock")),
-    )
-    with op.batch_alter_table("paddock", schema=None) as batch_op:
-        batch_op.create_index(batch_op.f("ix_paddock_cell"), ["cell"], unique=False)
-        batch_op.create_index(batch_op.f("ix_paddock_district"), ["district"], unique=False)
-        batch_op.create_index(batch_op.f("ix_paddock_holding"), ["holding"], unique=False)
-
-    op.create_table(
-        "station_day",
-        sa.Column("station", sa.String(), nullable=False),
-        sa.Column("day", sa.Date(), nullable=False),
-        sa.Column("version", sa.Integer(), nullable=False),
-        sa.Column("tmin", sa.Float(precision=53), nullable=True),
-        sa.Column("tmax", sa.Float(precision=53), nullable=True),
-        sa.Column("rain", sa.Float(precision=53), nullable=True),
-        sa.Column("arrived_at", sa.BigInteger(), nullable=False),
-        sa.Column("knowable_from", sa.BigInteger(), nullable=False),
-        sa.Column("arrival_assumed", sa.Boolean(), nullable=False),
-        sa.Column("digest", sa.String(length=32), nullable=False),
-        sa.ForeignKeyConstraint(["station"], ["station.id"], name=op.f("fk_station_day_station_station")),
-        sa.PrimaryKeyConstraint("station", "day", "version", name=op.f("pk_station_day")),
-    )
-    op.create_table(
         "subscriber",
         sa.Column("id", sa.String(), nullable=False),
         sa.Column("district", sa.String(), nullable=False),
@@ -431,13 +452,6 @@ def downgrade() -> None:
         batch_op.drop_index(batch_op.f("ix_subscriber_district"))
 
     op.drop_table("subscriber")
-    op.drop_table("station_day")
-    with op.batch_alter_table("paddock", schema=None) as batch_op:
-        batch_op.drop_index(batch_op.f("ix_paddock_holding"))
-        batch_op.drop_index(batch_op.f("ix_paddock_district"))
-        batch_op.drop_index(batch_op.f("ix_paddock_cell"))
-
-    op.drop_table("paddock")
     with op.batch_alter_table("outbox", schema=None) as batch_op:
         batch_op.drop_index(
             "ix_outbox_waiting",
@@ -464,11 +478,12 @@ def downgrade() -> None:
         batch_op.drop_index(batch_op.f("ix_weather_block_district"))
 
     op.drop_table("weather_block")
-    with op.batch_alter_table("station", schema=None) as batch_op:
-        batch_op.drop_index(batch_op.f("ix_station_district"))
-        batch_op.drop_index(batch_op.f("ix_station_cell"))
+    with op.batch_alter_table("station_version", schema=None) as batch_op:
+        batch_op.drop_index(batch_op.f("ix_station_version_district"))
+        batch_op.drop_index(batch_op.f("ix_station_version_cell"))
 
-    op.drop_table("station")
+    op.drop_table("station_version")
+    op.drop_table("station_day")
     op.drop_table("signal")
     with op.batch_alter_table("postcode", schema=None) as batch_op:
         batch_op.drop_index(batch_op.f("ix_postcode_cell"))
@@ -478,14 +493,22 @@ def downgrade() -> None:
         batch_op.drop_index(batch_op.f("ix_person_district"))
 
     op.drop_table("person")
-    with op.batch_alter_table("holding", schema=None) as batch_op:
-        batch_op.drop_index(batch_op.f("ix_holding_district"))
+    with op.batch_alter_table("paddock", schema=None) as batch_op:
+        batch_op.drop_index(batch_op.f("ix_paddock_holding"))
+        batch_op.drop_index(batch_op.f("ix_paddock_district"))
+        batch_op.drop_index(batch_op.f("ix_paddock_cell"))
 
-    op.drop_table("holding")
+    op.drop_table("paddock")
+    with op.batch_alter_table("holding_version", schema=None) as batch_op:
+        batch_op.drop_index(batch_op.f("ix_holding_version_district"))
+
+    op.drop_table("holding_version")
     with op.batch_alter_table("edition", schema=None) as batch_op:
         batch_op.drop_index(batch_op.f("ix_edition_district"))
 
     op.drop_table("edition")
+    op.drop_table("district_version")
+    op.drop_table("station")
     op.drop_table("statement")
     with op.batch_alter_table("rule_version", schema=None) as batch_op:
         batch_op.drop_index(batch_op.f("ix_rule_version_hash"))
@@ -500,6 +523,7 @@ def downgrade() -> None:
 
     op.drop_table("observation")
     op.drop_table("job_run")
+    op.drop_table("holding")
     op.drop_table("district")
     with op.batch_alter_table("audit_entry", schema=None) as batch_op:
         batch_op.drop_index(batch_op.f("ix_audit_entry_what"))
