@@ -122,7 +122,8 @@ def _candidate(offer: Offer, seat: Seat) -> Candidate | None:
         return None
     statement = offer.statement
     ask = Ask.KEEP_IN_MIND if near.band_km is None else statement.ask
-    return Candidate(statement.hash, statement.pest, ask, near, offer.day, offer.paddock if near.own else None)
+    paddock = offer.paddock if near.own else None
+    return Candidate(statement.hash, statement.wording, statement.pest, ask, near, offer.day, paddock)
 
 
 def _near(offer: Offer, seat: Seat) -> Near | None:
@@ -178,7 +179,7 @@ def _stirs(candidate: Candidate, awake: Sequence[Stand]) -> bool:
 
 
 def _ask(bundle: Bundle, seat: Seat, scene: Scene) -> Line:
-    chosen = _best(bundle, scene)
+    chosen = _best(bundle)
     counted = chosen[0].paddock
     stands = sorted(bundle.stands, key=lambda stand: counted is not None and stand.paddock != counted)
     found = seat.counts[bundle.pest]
@@ -192,12 +193,11 @@ def _ask(bundle: Bundle, seat: Seat, scene: Scene) -> Line:
     return Line(tuple(each.statement for each in chosen), own)
 
 
-def _best(bundle: Bundle, scene: Scene) -> list[Candidate]:
+def _best(bundle: Bundle) -> list[Candidate]:
     """The best statement of each sort, and up to three own counts; strongest first."""
-    wording = {offer.statement.hash: offer.statement.wording for offer in scene.offers}
     chosen: list[Candidate] = []
     for each in bundle.candidates:
-        same = sum(wording[other.statement] == wording[each.statement] for other in chosen)
+        same = sum(other.wording == each.wording for other in chosen)
         if same < (MOST_COUNTS if each.paddock else 1) and each.statement not in {c.statement for c in chosen}:
             chosen.append(each)
     return chosen

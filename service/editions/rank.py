@@ -19,6 +19,7 @@ NEARNESS = {0: 1.0, 5: 0.9, 10: 0.7, 20: 0.5, None: 0.25}  # by the band's upper
 MATTERS = {"reported": 1.0, "any": 0.9, "up": 0.9, "sown": 0.8, "before": 0.7, "unknown": 0.6}
 NEWNESS = ((7, 1.0), (14, 0.7), (28, 0.5))  # days old at most, weight
 OLD = 0.3
+SAYS_MORE = ("count", "hatch", "first_seen", "counted_near")  # between equals, which wording goes first
 
 
 @dataclass(frozen=True, slots=True)
@@ -26,6 +27,7 @@ class Candidate:
     """A statement that reaches a reader, and how."""
 
     statement: str
+    wording: str
     pest: str
     ask: Ask
     near: Near
@@ -65,7 +67,10 @@ def _bundle(pest: str, candidates: Sequence[Candidate], stands: Sequence[Stand],
     def weight(each: Candidate) -> float:
         return score(each.near, surest[0].at, (today - each.day).days)
 
-    ordered = sorted(candidates, key=lambda each: (-STRENGTH[each.ask], -weight(each), each.statement))
+    def order(each: Candidate) -> tuple[float, float, int, str]:
+        return -STRENGTH[each.ask], -weight(each), SAYS_MORE.index(each.wording), each.statement
+
+    ordered = sorted(candidates, key=order)
     return Bundle(pest, ordered[0].ask, max(map(weight, ordered)), tuple(surest), tuple(ordered))
 
 

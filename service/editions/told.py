@@ -36,9 +36,9 @@ def _counted_near(_figures: Mapping[str, Any], near: Any, _paddock: str | None) 
 
 
 def _first_seen(figures: Mapping[str, Any], near: Any, _paddock: str | None) -> str:
-    finds, looks = figures["finds"], say.how_many(figures["looks"], "look")
-    which = f"earliest of {finds:,} we have" if finds > 1 else "the only one we have"
-    return f"First this season, {say.near(near)}: {which}, from {looks}."
+    said = f"First this season, {say.near(near)}, from {say.how_many(figures['looks'], 'look')}"
+    seasons = None if figures["earlier_than_usual"] else figures["earliest_of"]
+    return f"{said}; the earliest of the {seasons} seasons we have." if seasons else f"{said}."
 
 
 _SAY: Mapping[str, Callable[[Mapping[str, Any], Any, str | None], str]] = {
@@ -117,7 +117,10 @@ def _why_first_seen(figures: Mapping[str, Any]) -> list[str]:
     tenths = round(10 * chance)
     share = f"about {tenths} of 10" if tenths else "fewer than 1 of 10"
     past = say.how_many(seasons, "past season")
-    return [f"In {share} usual seasons, this much looking would have shown it by now (going by {past})."]
+    said = [f"In {share} usual seasons, this much looking would have shown it by then (going by {past})."]
+    if figures["earliest_of"] and not figures["earlier_than_usual"]:
+        said.append("The more people look, the sooner they find: the earliest need not be early.")
+    return said
 
 
 _WHY: Mapping[str, Callable[[Mapping[str, Any]], list[str]]] = {

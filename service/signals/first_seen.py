@@ -56,6 +56,7 @@ def _signal(known: Known, rule: Rule, pest: Pest, first: Sequence[Observation]) 
             "looks": len(this_season),
             "chance": chance,
             "past_seasons": usual.seasons,
+            "earliest_of": _earliest_of(known, looks, sure, day),
             "earlier_than_usual": usual.earlier_than_usual(
                 parameters["earlier_if_chance_at_most"], parameters["earlier_needs_seasons"]
             ),
@@ -84,6 +85,19 @@ def _usual(known: Known, looks: Sequence[Look], sure: set[str], day: date) -> wi
         [(look.day - known.season_from).days for look in now],
         [CLASSES[look.why, look.effort] for look in now],
     )
+
+
+def _earliest_of(known: Known, looks: Sequence[Look], sure: set[str], day: date) -> int | None:
+    """Of how many seasons, this one too, it is the earliest find; None if a past one was as early, or none can tell.
+
+    Only a season in which someone had looked by that day of it can tell.
+    """
+    found_by_then: dict[date, bool] = {}
+    for look in looks:
+        opens = season_start(known, look.day)
+        if opens < known.season_from and look.day - opens <= day - known.season_from:
+            found_by_then[opens] = found_by_then.get(opens, False) or not sure.isdisjoint(look.rows)
+    return None if not found_by_then or any(found_by_then.values()) else len(found_by_then) + 1
 
 
 def _matters(known: Known, pest: Pest, row: Observation) -> bool:

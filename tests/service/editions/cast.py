@@ -151,6 +151,7 @@ def first_seen(row: Observation, *, finds: int = 1, looks: int = 11, **changes: 
         "looks": looks,
         "chance": 0.4,
         "past_seasons": 5,
+        "earliest_of": None,
         "earlier_than_usual": False,
         "cell": row.place.cell,
     }

@@ -116,7 +116,9 @@ def test_fifty_strangers_together_can_not_tell_fewer_than_five_farms_apart(
 def test_strangers_are_told_something_all_the_same(told: dict[tuple[int, bool], Reading]) -> None:
     """The promise is not kept by saying nothing: some are asked to look, and at different distances."""
     assert any("GO AND LOOK" in text for text in told[0, False])
-    assert any("Found and counted" in text or "found and counted" in text for text in told[0, True])
+    rows, signals = found_at(0, True)
+    counted = compose(a_known(rows), signals[1:], cast.BOOK, READERS)  # without the first find, which says more
+    assert any("found and counted" in printed(cast.said(counted, reader.id)) for reader in READERS)
     assert len(set(told.values())) > 2
 
 

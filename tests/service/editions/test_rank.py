@@ -11,8 +11,10 @@ from tests.builders import TODAY
 CANOLA = Stand("canola", "reported", "p0", 11)
 
 
-def candidate(pest: str = "mites", ask: Ask = Ask.LOOK, near: Near = OWN, ago: int = 1, name: str = "a") -> Candidate:
-    return Candidate(name, pest, ask, near, TODAY - timedelta(days=ago))
+def candidate(
+    pest: str = "mites", ask: Ask = Ask.LOOK, near: Near = OWN, ago: int = 1, name: str = "a", wording: str = "hatch"
+) -> Candidate:
+    return Candidate(name, wording, pest, ask, near, TODAY - timedelta(days=ago))
 
 
 def bundle(pest: str, ask: Ask = Ask.LOOK, points: float = 1.0) -> Bundle:
@@ -66,3 +68,10 @@ def test_keep_in_mind_takes_no_time() -> None:
     asks, mind = choose([bundle("a", Ask.KEEP_IN_MIND), bundle("b")], {"a": 40, "b": 45})
     assert [each.pest for each in asks] == ["b"]
     assert [each.pest for each in mind] == ["a"]
+
+
+def test_between_equals_the_one_that_says_more_goes_first_whatever_their_names() -> None:
+    for one, other in (("a", "b"), ("b", "a")):
+        both = [candidate(name=one, wording="counted_near"), candidate(name=other, wording="first_seen")]
+        (merged,) = merge(both, {"mites": [CANOLA]}, TODAY)
+        assert [each.wording for each in merged.candidates] == ["first_seen", "counted_near"]

@@ -114,8 +114,8 @@ def test_the_answer_comes_first_with_its_minutes(every: list[SlipView]) -> None:
 def test_counts_are_never_without_their_effort(every: list[SlipView]) -> None:
     for shown in every:
         assert not re.search(r"\b\d+ finds\b", printed(shown))
-        for found in re.finditer(r"(earliest of|the only one).*", printed(shown)):
-            assert re.search(r"we have, from \d+ looks?", found[0])
+        for found in re.finditer(r"first this season.*", printed(shown), re.IGNORECASE):
+            assert re.search(r", from \d+ looks?[.;]", found[0])
 
 
 def test_every_sentence_has_an_origin_that_the_trail_knows(every: list[SlipView]) -> None:
@@ -189,9 +189,12 @@ def test_a_number_from_memory_is_never_shown() -> None:
 
 def test_a_first_find_says_the_looking_behind_it() -> None:
     row = cast.look(1, True)
-    assert "First this season, within 15 km: earliest of 3 we have, from 41 looks." in text(
-        cast.first_seen(row, finds=3, looks=41), rows=[row]
-    )
+    said = text(cast.first_seen(row, finds=3, looks=41), rows=[row])
+    assert "First this season, within 15 km, from 41 looks." in said
+    assert "earliest" not in said  # the first of this season's three finds is their earliest by its nature
+    of_five = text(cast.first_seen(row, looks=41, figures={"earliest_of": 5}), rows=[row])
+    assert "First this season, within 15 km, from 41 looks; the earliest of the 5 seasons we have." in of_five
+    assert "the earliest need not be early" in of_five
     early = cast.first_seen(row, figures={"earlier_than_usual": True, "chance": 0.04})
     said = text(early, rows=[row])
     assert "Earlier than usual for this much looking." in said

@@ -79,6 +79,7 @@ def test_the_first_find_is_named_with_the_looks_behind_it() -> None:
         "looks": 2,
         "chance": None,
         "past_seasons": 0,
+        "earliest_of": None,
         "earlier_than_usual": False,
         "cell": rows[1].place.cell,
     }
@@ -102,6 +103,16 @@ def test_more_looking_makes_early_less_remarkable() -> None:
     usual = signals(past(2021, 2022, 2023, 2024) + now())
     often = signals(past(2021, 2022, 2023, 2024) + now(looks_a_week=8))
     assert often[0].figures["chance"] > usual[0].figures["chance"]
+
+
+def test_the_earliest_of_the_seasons_that_can_tell() -> None:
+    """By hand: found on 11 May; past seasons found it on the first look day from 1 June on."""
+    assert signals(past(2023, 2024, 2025) + now())[0].figures["earliest_of"] == 4
+    as_early = season(2022, date(2022, 4, 1))
+    assert signals([*past(2023, 2024, 2025), *as_early, *now()])[0].figures["earliest_of"] is None
+    looked_later = [row for row in past(2025) if row.day > date(2025, 6, 1)]
+    assert signals([*past(2023, 2024), *looked_later, *now()])[0].figures["earliest_of"] == 3
+    assert signals(looked_later + now())[0].figures["earliest_of"] is None
 
 
 @pytest.mark.parametrize(
