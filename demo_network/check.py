@@ -25,7 +25,7 @@ SAID = {
     "hatch": "the weather this hatch needs has likely come",
     "threshold": "at or above the number",
     "first_seen": "first this season",
-    "busy_looking": "looked than usual",
+    "busy_looking": "more looking than usual",
     "one_reporter": "came from one person",
 }
 PLURALS = {"redlegged earth mites": MITE, "lucerne fleas": FLEA, "cutworms": CUTWORM}

@@ -102,7 +102,7 @@ EVENTS = (
         radius_km=45.0,
         weeks=_weeks(23, 23),
         adds="130 more looks in one week by everybody who reports, finding mites no more often than usual",
-        shown_as="more people looked than usual",
+        shown_as="more looking than usual",
         rows=planting.busy_week,
     ),
     Event(

@@ -52,12 +52,12 @@ def _by_one(pest: str, looks: Sequence[Look], rows: Mapping[str, Observation]) -
 
 
 def _more_looking(known: Known, pest: str, lately: Sequence[Look], rows: Mapping[str, Observation]) -> list[Statement]:
-    """More looks than usual, and no greater share of finds among them.
+    """More looks than usual, and a share of finds among them that need not be greater.
 
     Set against each other are the busiest seven days of the last 14 and the eight weeks before those 14
     days (from the season's first look on, at least three weeks). *More*: twice the weekly mean or more,
-    and beyond it by three times its root, which chance seldom reaches. *No more often*: the 95 % Wilson
-    intervals of the two shares overlap, or the share is lower.
+    and beyond it by three times its root, which chance seldom reaches. Nothing is held against finds whose
+    share is surely greater: its 95 % Wilson interval lies above that of the share before.
     """
     if not any(look.found for look in lately):
         return []

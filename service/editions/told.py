@@ -7,6 +7,7 @@ from rules.slip import Sentence, Statement
 from service.editions import sentences as say
 
 ADVISER = "this is a reason to talk to your adviser, not a decision"
+NOT_SETTLED = "more samples may not settle it"
 NO_NUMBER = "There is no agreed number for this crop, stage and unit."
 
 
@@ -63,10 +64,10 @@ def verdict(statement: Statement, relook_days: int) -> Sentence:
     """How a reader's own count stands to the number that matters."""
     figures = statement.figures
     more = figures.get("more_spots")
-    spots = f" at {say.how_many(more, 'more spot')}" if more else ""
+    near = f"take more samples at {say.how_many(more, 'more spot')}" if more else f"{NOT_SETTLED}; {ADVISER}"
     words = {
         "at_or_above": f"At or above the number: {ADVISER}.",
-        "near": f"Near the number: take more samples{spots}.",
+        "near": f"Near the number: {near}.",
         "below": f"Below the number on that day; count again within {relook_days} days.",
         "no_agreed_number": NO_NUMBER,
     }

@@ -183,11 +183,13 @@ def _one_reporter(figures: Mapping[str, Any], _many: str) -> str:
 
 
 def _more_looking(figures: Mapping[str, Any], many: str) -> str:
-    usual = say.number(figures["usual_looks"])
-    return (
-        f"More people looked than usual ({say.how_many(figures['looks'], 'look')} in a week; usually {usual}), "
-        f"and {many} turned up no more often than usual."
-    )
+    now, before = (figures["finds"], figures["looks"]), (figures["earlier_finds"], figures["earlier_looks"])
+    usual = max(1, round(figures["usual_looks"]))
+    more = f"There was more looking than usual ({say.how_many(now[1], 'look')} in a week, usually about {usual})"
+    shares = f"in {now[0]} of {now[1]} looks, and in {before[0]} of {before[1]} before"
+    if now[0] * before[1] <= before[0] * now[1]:
+        return f"{more}, and {many} turned up no more often: {shares}."
+    return f"{more}, which may explain some of the finds: {many} turned up {shares}."
 
 
 _EFFORT = {"one_reporter": _one_reporter, "more_looking": _more_looking}

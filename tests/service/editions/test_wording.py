@@ -169,6 +169,16 @@ def test_a_count_near_the_number_needs_more_samples() -> None:
     assert "Near the number: take more samples at 4 more spots." in said
 
 
+def test_a_count_that_no_counting_settles_asks_for_no_more_of_it() -> None:
+    """As where it lies inside the number's own doubt, or where too many spots would be needed."""
+    said = text(cast.threshold(0, "near", figures={"more_spots": None}), rows=[cast.look(0, True, stage=11)])
+    assert (
+        "Near the number: more samples may not settle it; this is a reason to talk to your adviser, not a decision."
+        in said
+    )
+    assert "take more samples" not in said
+
+
 def test_a_count_without_an_agreed_number() -> None:
     said = text(cast.threshold(0, "no_agreed_number"), rows=[cast.look(0, True, stage=11)])
     assert "There is no agreed number for this crop, stage and unit." in said
@@ -240,9 +250,25 @@ def test_more_looking_is_held_against_the_finds() -> None:
     busy = [cast.look(i, i < 4, ago=3) for i in range(8)]
     usual = [cast.look(i, i == 1, ago=14 + 7 * week) for week in range(5) for i in (1, 2)]
     assert (
-        "More people looked than usual (8 looks in a week; usually 2), "
-        "and redlegged earth mites turned up no more often than usual." in text(rows=[*busy, *usual])
+        "There was more looking than usual (8 looks in a week, usually about 2), "
+        "and redlegged earth mites turned up no more often: in 4 of 8 looks, and in 5 of 10 before."
+        in text(rows=[*busy, *usual])
     )
+
+
+def test_more_looking_is_no_reason_to_deny_a_greater_share() -> None:
+    """5 of 8 against 5 of 10: the intervals overlap, but that does not make it *no more often*."""
+    busy = [cast.look(i, i < 5, ago=3) for i in range(8)]
+    usual = [cast.look(i, i == 1, ago=14 + 7 * week) for week in range(5) for i in (1, 2)]
+    said = text(rows=[*busy, *usual])
+    assert "no more often" not in said
+    assert "which may explain some of the finds: redlegged earth mites turned up in 5 of 8 looks" in said
+
+
+def test_a_usual_number_of_looks_is_a_whole_one() -> None:
+    busy = [cast.look(i, i < 4, ago=1 + day) for i in range(8) for day in range(2)]
+    usual = [cast.look(i, i == 1, ago=14 + 7 * week) for week in range(5) for i in range(1, 3 + (week == 4))]
+    assert "(16 looks in a week, usually about 2)" in text(rows=[*busy, *usual])  # 11 in five weeks: 2.2
 
 
 def test_many_signals_of_one_pest_make_one_card() -> None:
