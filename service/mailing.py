@@ -76,10 +76,19 @@ def canonical_hash(rendered: Rendered) -> str:
 
 
 def render_all(
-    edition: Edition, composed: Composed, book: Book, known: Known, readers: Sequence[Subscriber], progress: Progress
+    edition: Edition,
+    composed: Composed,
+    book: Book,
+    known: Known,
+    readers: Sequence[Subscriber],
+    more_names: frozenset[str],
+    progress: Progress,
 ) -> dict[str, str]:
-    """The canonical hash of every reader's digest; UnsafeText if the gate marks a word in any of them."""
-    named = names(known)
+    """The canonical hash of every reader's digest; UnsafeText if the gate marks a word in any of them.
+
+    `more_names` are names that came after the draft, which a note could hold.
+    """
+    named = names(known) | more_names
     gate.refuse({"note": edition.note}, named, _public(known))
     found = {}
     for done, reader in enumerate(readers):

@@ -12,6 +12,7 @@ from datetime import datetime, timedelta
 from functools import cache
 from pathlib import Path
 from typing import Any
+from urllib.parse import urlsplit
 from zoneinfo import ZoneInfo
 
 from rules.book import Book
@@ -78,23 +79,23 @@ def take(
     revise: bool = False,
 ) -> Outcome:
     """Take a file in, whatever it holds: all of it, or nothing and what to mend."""
-    kind = kind_of(file)
-    if kind == "observations":
-        counts = intake.take_observations(
-            store,
-            file,
-            clock=clock,
-            source=source,
-            district=district,
-            history=history,
-            keep_good=keep_good,
-            revise=revise,
-            progress=progress,
-        )
-    elif kind == "station_days":
-        counts = weather.take_station_days(store, file, clock=clock, history=history)
-    else:
-        counts = take_network(store, file, clock=clock)
+    with store.arrivals():
+        if (kind := kind_of(file)) == "observations":
+            counts = intake.take_observations(
+                store,
+                file,
+                clock=clock,
+                source=source,
+                district=district,
+                history=history,
+                keep_good=keep_good,
+                revise=revise,
+                progress=progress,
+            )
+        elif kind == "station_days":
+            counts = weather.take_station_days(store, file, clock=clock, history=history)
+        else:
+            counts = take_network(store, file, clock=clock)
     return {"file": file.name, "kind": kind, **counts}
 
 
@@ -103,7 +104,7 @@ def take(
 
 def run_rules(store: Store, district_id: str, *, clock: Clock, as_of: datetime | None = None) -> Outcome:
     """Run the live rules on what was knowable at a moment, now if none is given, and keep what they say."""
-    moment = clock.now()
+    moment = _now(store, clock)
     if as_of is not None:
         moment = as_of if as_of.tzinfo else as_of.replace(tzinfo=_zone(store, district_id, moment))
     with _claimed(store, "rules", district_id, clock) as done:
@@ -120,7 +121,7 @@ def run_rules(store: Store, district_id: str, *, clock: Clock, as_of: datetime |
 def draft(store: Store, district_id: str, *, clock: Clock, by: str = "leafturn") -> Outcome:
     """Draft this week's edition from what is knowable now. An unsigned draft of the week is replaced."""
     with _claimed(store, "draft", district_id, clock) as done:
-        done |= _draft(store, district_id, clock.now(), by)
+        done |= _draft(store, district_id, _now(store, clock), by)
     return done
 
 
@@ -208,7 +209,8 @@ def sign(
     mailing.expect_same(edition, mailing.hashes(book))
     composed = compose(known, found, book, readers, held)
     signed = replace(edition, note=note, head=mailing.head(id, known, signer.name, note))
-    canonical = mailing.render_all(signed, composed, book, known, readers, progress)
+    names = showing.names_now(store, edition.district, now)
+    canonical = mailing.render_all(signed, composed, book, known, readers, names, progress)
     rows = [mailing.outgoing(signed, reader, settings, now) for reader in readers]
     with store.writing() as c:
         editions.save_draft(c, signed, composed.statements.values(), composed.slips.values(), readers)
@@ -235,13 +237,26 @@ def send(
             audit.add(c, who=by, at=clock.now(), what="send", subject=id, why="signed")
         waiting = sum(outbox.counts(c, id).get(state, 0) for state in outbox.WAITING)
     mailer = mailing.Mailer(store, settings, _tokens(settings), clock, lambda edition: book_of(store, edition))
-    sender = smtp.SmtpSender(settings.mail, password=settings_file.mail_password(settings))
+    hello = urlsplit(settings.web.base_url).hostname or "localhost"
+    sender = smtp.SmtpSender(settings.mail, password=settings_file.mail_password(settings), hello=hello)
 
     def moved(counts: Any) -> None:
         if progress:
             progress(sum(counts.values()), waiting, "Sending")
 
-    return {"edition": id, **worker.deliver(store, sender, mailer, clock, settings, moved)}
+    counts = worker.deliver(store, sender, mailer, clock, settings, moved)
+    with store.reading() as c:
+        left = outbox.counts(c, id)
+    return {"edition": id, **counts, "still_to_send": left["queued"] + left["deferred"], **_unsure(left)}
+
+
+def _unsure(left: dict[str, int]) -> Outcome:
+    """What to say of messages that an earlier sending held when it was stopped."""
+    count = left["leased"] + left["sending"]
+    if not count:
+        return {}
+    words = "held by a sending that is under way or was cut off; send again in a quarter of an hour to take them up"
+    return {"held_elsewhere": f"{count} {words}"}
 
 
 @contextmanager
@@ -347,6 +362,12 @@ def _book(store: Store, as_of: datetime) -> Book:
 @cache
 def _catalogue() -> Book:
     return rulebook.load()
+
+
+def _now(store: Store, clock: Clock) -> datetime:
+    """A moment of which everything that was knowable is in the store: no take is still under way."""
+    with store.arrivals():
+        return clock.now()
 
 
 def _zone(store: Store, district_id: str, as_of: datetime) -> ZoneInfo:

@@ -1,6 +1,7 @@
 """What the coordinator is shown: signals in a line, an edition's statements in words, and what the gate marks."""
 
 from collections import Counter
+from datetime import date, datetime
 from typing import Any
 
 from rules.book import Book
@@ -28,6 +29,14 @@ def signal_line(signal: Signal) -> Outcome:
         "rows": len(signal.evidence),
         "figures": dict(signal.figures),
     }
+
+
+def names_now(store: Store, district: str, now: datetime) -> frozenset[str]:
+    """People, farms and paddocks as they are called at this moment."""
+    with store.reading() as c:
+        farms = network.holdings(c, district, now, date.max)
+        people, fields = network.people(c, district), network.paddocks(c, district, now)
+    return frozenset({p.name for p in people} | {f.name for f in farms} | {f.name for f in fields})
 
 
 def edition(store: Store, id: str, book: Book, known: Known) -> Outcome:

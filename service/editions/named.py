@@ -54,8 +54,8 @@ class Names:
             for name in self._by_word.get(token.folded, ()):
                 if self._stands(name, line, tokens, at):
                     yield token.begin, _end(name, tokens[at + len(name.folded) - 1])
-        for name in self._without_words:
-            yield from ((hit.start(), hit.end()) for hit in re.finditer(re.escape(name), line))
+        for bare in self._without_words:
+            yield from ((hit.start(), hit.end()) for hit in re.finditer(re.escape(bare), line))
 
     def _index(self, entry: _Name) -> None:
         endings = _ENDINGS if len(entry.folded) == 1 and entry.kind != "short" else ("",)

@@ -7,7 +7,9 @@ Reading and writing never mix: `Store.reading()` gives a snapshot, `Store.writin
 (BEGIN IMMEDIATE on SQLite). No network or rendering work belongs inside either.
 """
 
+import fcntl
 import sqlite3
+import time
 from collections.abc import Iterator
 from contextlib import contextmanager
 from datetime import UTC, datetime, timedelta
@@ -31,6 +33,7 @@ metadata = MetaData(
 )
 
 EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
+_ARRIVALS = 5_190_443  # any fixed number: the name of PostgreSQL's lock on taking rows in
 _MICROSECOND = timedelta(microseconds=1)
 
 
@@ -59,8 +62,9 @@ class UtcTime(TypeDecorator[datetime]):
 class Store:
     """An open store. Give it to a step; the step decides whether it reads or writes."""
 
-    def __init__(self, engine: Engine) -> None:
+    def __init__(self, engine: Engine, busy_s: int = 30) -> None:
         self.engine = engine
+        self._busy_s = busy_s
 
     @classmethod
     def open(cls, url: str, busy_s: int = 30) -> "Store":
@@ -70,8 +74,8 @@ class Store:
         except ArgumentError as error:
             raise StoreDown(f"store.url {url!r} is not a database URL; see: leafturn init") from error
         if parsed.get_backend_name() == "sqlite":
-            return cls(_sqlite(url, parsed.database, busy_s))
-        return cls(create_engine(parsed.set(drivername="postgresql+psycopg"), pool_pre_ping=True))
+            return cls(_sqlite(url, parsed.database, busy_s), busy_s)
+        return cls(create_engine(parsed.set(drivername="postgresql+psycopg"), pool_pre_ping=True), busy_s)
 
     @property
     def is_sqlite(self) -> bool:
@@ -88,6 +92,27 @@ class Store:
         """The write transaction: all of it is kept, or none."""
         with _in_own_words(), self._connect(write=True) as connection, connection.begin():
             yield connection
+
+    @contextmanager
+    def arrivals(self) -> Iterator[None]:
+        """Held by whatever takes rows in, from before it reads the clock until its rows are kept.
+
+        Who reads the clock inside, as a draft does, knows that nothing is still on its way that will claim to
+        have been knowable before. It ends with the process that holds it.
+        """
+        if self.is_sqlite:
+            with _file_lock(self.engine.url.database, self._busy_s):
+                yield
+            return
+        with _in_own_words(), self._connect(write=True) as connection:
+            connection.execution_options(isolation_level="AUTOCOMMIT")
+            connection.exec_driver_sql(f"SET lock_timeout = '{self._busy_s}s'")
+            connection.exec_driver_sql(f"SELECT pg_advisory_lock({_ARRIVALS})")
+            try:
+                yield
+            finally:
+                connection.exec_driver_sql(f"SELECT pg_advisory_unlock({_ARRIVALS})")
+                connection.exec_driver_sql("RESET lock_timeout")
 
     def close(self) -> None:
         self.engine.dispose()
@@ -119,12 +144,30 @@ def _sqlite(url: str, database: str | None, busy_s: int) -> Engine:
 
 
 @contextmanager
+def _file_lock(database: str | None, busy_s: int) -> Iterator[None]:
+    """A lock beside the store's file; the operating system lets go of it when the process ends."""
+    if not database or database == ":memory:":
+        yield
+        return
+    with open(f"{database}-arrivals", "w", encoding="ascii") as file:
+        for _ in range(busy_s * 20):
+            try:
+                fcntl.flock(file, fcntl.LOCK_EX | fcntl.LOCK_NB)
+                break
+            except BlockingIOError:
+                time.sleep(0.05)
+        else:
+            raise StoreBusy("another process is taking a file in; try again when it is done")
+        yield
+
+
+@contextmanager
 def _in_own_words() -> Iterator[None]:
     """Outside errors become ours here and nowhere else."""
     try:
         yield
     except OperationalError as error:
-        if "locked" in str(error) or "busy" in str(error):
+        if any(word in str(error) for word in ("locked", "busy", "lock timeout")):
             raise StoreBusy("another process is writing to the store; try again in a moment") from error
         raise StoreDown(f"the store did not answer: {error.orig}") from error
     except DBAPIError as error:

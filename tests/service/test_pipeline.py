@@ -314,3 +314,14 @@ def test_a_step_that_another_process_is_at_says_so(full: Store, clock: SetClock)
         pipeline.draft(full, "north", clock=clock)
     clock.set(small_network.CUT_OFF + timedelta(minutes=11))
     assert pipeline.draft(full, "north", clock=clock)["readers"] == READERS
+
+
+def test_a_name_that_came_after_the_draft_stops_the_signing_too(
+    full: Store, settings: Settings, clock: SetClock
+) -> None:
+    pipeline.draft(full, "north", clock=clock)
+    clock.set(small_network.CUT_OFF + timedelta(hours=20))
+    with full.writing() as c:
+        network.save_paddocks(c, [replace(small_network.paddocks()[0], name="Fulmar Rise")], clock.now())
+    with pytest.raises(UnsafeText, match="Fulmar Rise"):
+        pipeline.sign(full, settings, ID, by="ivy", clock=clock, note="Fulmar Rise was crawling on Monday")
