@@ -1,5 +1,6 @@
 """What the signals of a week let an edition say, and from where each statement reaches readers."""
 
+from collections import defaultdict
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from datetime import date
@@ -7,7 +8,7 @@ from typing import Any
 
 from rules.book import LIVE_MARKS, Book, Pest
 from rules.digests import plain
-from rules.records import Ask, Known, Signal
+from rules.records import Ask, Known, Observation, Signal
 from rules.slip import Basis, Statement, statement_hash
 from service.editions.privacy import Crops, View, farms_of
 
@@ -66,7 +67,7 @@ def _offers(signal: Signal, known: Known, book: Book, seen: View) -> Iterator[Of
         yield Offer(_statement(signal, "count", exact), day, paddock=signal.paddock)
         yield from _counted_near(signal, day, known, book, seen)
     elif seen.shown:
-        yield _first_seen(signal, day, known, seen)
+        yield from _first_seen(signal, day, known, seen)
 
 
 def _counted_near(signal: Signal, day: date, known: Known, book: Book, seen: View) -> Iterator[Offer]:
@@ -78,15 +79,21 @@ def _counted_near(signal: Signal, day: date, known: Known, book: Book, seen: Vie
         yield Offer(near, day, spot=spot, paddock=signal.paddock)
 
 
-def _first_seen(signal: Signal, day: date, known: Known, seen: View) -> Offer:
-    """The season's first find, without its day and whatever its crop, which could give away whose it was."""
+def _first_seen(signal: Signal, day: date, known: Known, seen: View) -> Iterator[Offer]:
+    """The season's first find, without its day and whatever its crop, which could give away whose it was.
+
+    Finds of that day in other public cells are as much the first; each is told from its own.
+    """
     keys = {each.id for each in signal.evidence}
-    spot = seen.spot(sorted(keys), signal.figures["cell"])
     figures = {name: value for name, value in signal.figures.items() if name not in ("cell", "day")}
-    rows = [row for row in known.observations if row.key in keys and row.present and row.day == day]
-    finders = frozenset(row.reporter for row in rows) | {row.paddock for row in rows if row.paddock}
-    said = _statement(signal, "first_seen", {**figures, "spot": spot}, Ask.LOOK)
-    return Offer(said, day, spot=spot, finders=finders)
+    spots: dict[int | None, list[Observation]] = defaultdict(list)
+    for row in known.observations:
+        if row.key in keys and row.present and row.day == day:
+            spots[seen.spot(sorted(keys), row.place.cell)].append(row)
+    for spot, rows in spots.items():
+        finders = frozenset(row.reporter for row in rows) | {row.paddock for row in rows if row.paddock}
+        said = _statement(signal, "first_seen", {**figures, "spot": spot}, Ask.LOOK)
+        yield Offer(said, day, spot=spot, finders=finders)
 
 
 def _cell(signal: Signal, known: Known) -> int:

@@ -7,9 +7,9 @@ from typing import Any
 import pytest
 
 from rules.digests import canonical
-from rules.records import Ask, Effort
+from rules.records import Ask, Effort, Evidence
 from service.editions.compose import compose
-from tests.builders import NOW, TODAY, a_paddock, a_postcode
+from tests.builders import NOW, TODAY, a_holding, a_paddock, a_postcode
 from tests.service.editions import cast
 from tests.service.editions.cast import CUTWORM, FLEA, MITE
 
@@ -68,6 +68,17 @@ def test_a_first_find_far_off_is_kept_in_mind_and_near_is_asked() -> None:
     far = cast.slip([row], [cast.first_seen(row)], readers=[cast.reader(paddocks=())], postcodes=code)
     assert not far.asks
     assert far.mind[0].own["near"] == [None]
+
+
+def test_first_finds_of_one_day_are_each_told_from_their_own_place() -> None:
+    """Eight farms here and five 60 km north; found in both on one day, named here first."""
+    north = [a_paddock(f"q{i}", holding=f"n{i}", place=cast.at(60 + i / 10, 0)) for i in range(5)]
+    holdings = [*cast.farms(), *(a_holding(f"n{i}") for i in range(5))]
+    rows = [cast.look(1, True), cast.look(2, True, place=north[0].place, paddock="q0")]
+    both = cast.first_seen(rows[0], evidence=tuple(Evidence("observation", row.key, 1, row.digest) for row in rows))
+    readers = [cast.reader("here"), cast.reader("north", paddocks=("q1",), person=None)]
+    slips = cast.edition(rows, [both], readers, paddocks=[*cast.fields(), *north], holdings=holdings).slips
+    assert [slip.asks[0].own["near"][0][0] for slip in slips.values()] == [5, 5]
 
 
 def test_a_pest_that_no_crop_of_the_readers_minds_is_not_mentioned() -> None:
