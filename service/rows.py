@@ -190,8 +190,9 @@ def text_of(path: Path) -> str:
 
 def header_of(path: Path) -> list[str]:
     """The column names of a table, in lower case and without spaces around them."""
-    records = _records(path, text_of(path))
-    return _names(next(records, []))
+    text = text_of(path)
+    first = text if '"' in text else text[: text.find("\n") + 1 or None]  # a large file is not copied for one line
+    return _names(next(_records(path, first), []))
 
 
 def read(path: Path, required: Sequence[str], optional: Sequence[str] = ()) -> list[Row]:

@@ -1,7 +1,7 @@
 """Check a sheet and build the store's rows of it; a large one in two processes, a half each.
 
 Checking is work for one core, and the loader that follows is too; so the second half of a large file goes to
-a process of its own. It gets what it needs in a file without a name, and leaves what it found in another.
+a process of its own, started while the file is still being read.
 """
 
 import os
@@ -10,8 +10,9 @@ import subprocess
 import sys
 import tempfile
 from collections.abc import Callable, Iterator
-from contextlib import contextmanager
+from contextlib import contextmanager, suppress
 from dataclasses import dataclass, replace
+from pathlib import Path
 from typing import IO
 
 import pyarrow as pa
@@ -24,8 +25,7 @@ from service.intake.sheet import Sheet
 
 Progress = Callable[[int, int | None, str], None]  # how many are done, of how many, what is done
 
-LARGE = 200_000  # rows; for fewer, starting a process takes longer than it saves
-SHARE = 0.55  # of a large file that is checked here: the other process has to start first
+LARGE = 16_000_000  # bytes of a file; for fewer, starting a process takes longer than it saves
 
 
 @dataclass(frozen=True, slots=True)
@@ -40,14 +40,15 @@ class Part:
 Found = tuple[list[pa.Table], list[Refusal]]
 
 
-def check(part: Part, progress: Progress | None = None) -> Found:
+def check(part: Part, helper: "Helper | None" = None, progress: Progress | None = None) -> Found:
     """The good rows as the store keeps them, block by block, and what is wrong with the others."""
-    if not _can_be_halved(part.sheet):
+    if helper is None or not _can_be_halved(part.sheet):
         return _check(part, progress)
-    here = round(len(part.wanted) * SHARE)
-    with _elsewhere(_slice(part, here, None)) as found_there:
-        tables, refused = _check(_slice(part, 0, here), progress)
-        more_tables, more_refused = found_there()
+    here = len(part.wanted) // 2
+    rest = _slice(part, here, None)
+    helper.give(rest)
+    tables, refused = _check(_slice(part, 0, here), progress)
+    more_tables, more_refused = helper.found() or _check(rest)
     if progress is not None:
         progress(int(part.sheet.numbers[-1]), int(part.sheet.numbers[-1]), _WORDS)
     return tables + more_tables, refused + more_refused
@@ -69,8 +70,8 @@ def _check(part: Part, progress: Progress | None = None) -> Found:
 
 
 def _can_be_halved(sheet: Sheet) -> bool:
-    """Whether a sheet is large, and no row's key depends on rows before it, as those without a record id do."""
-    if len(sheet.numbers) < LARGE or (os.cpu_count() or 1) < 2 or "record_id" not in sheet.header:
+    """Whether no row's key depends on rows before it, as those of rows without a record id do."""
+    if "record_id" not in sheet.header:
         return False
     return all(columns.given(chunk).all() for chunk in sheet.columns["record_id"].chunks)
 
@@ -87,28 +88,51 @@ def _slice(part: Part, start: int, end: int | None) -> Part:
 # --- the other process -------------------------------------------------------------------------
 
 
+class Helper:
+    """A process that checks one part of a sheet, once it is given one."""
+
+    def __init__(self, answers: IO[bytes]) -> None:
+        command = [sys.executable, "-c", f"from {__name__} import answer; answer()"]
+        self._answers = answers
+        reading, writing = os.pipe()
+        self._process = subprocess.Popen(command, stdin=reading, stdout=answers, stderr=subprocess.DEVNULL)
+        os.close(reading)
+        self._pipe = os.fdopen(writing, "wb")
+
+    def give(self, part: Part) -> None:
+        """Hand it the part; returns when it has read it."""
+        with suppress(BrokenPipeError):  # it has ended: `found` will say so
+            pickle.dump(part, self._pipe, protocol=5)
+            self._pipe.flush()
+
+    def found(self) -> Found | None:
+        """Wait for what it found; None if it could not do its work, for want of memory perhaps."""
+        if self._process.wait() != 0:
+            return None
+        self._answers.seek(0)
+        result: Found = pickle.load(self._answers)
+        return result
+
+    def stop(self) -> None:
+        """End it, whatever it is doing."""
+        self._process.kill()
+        self._process.wait()
+        with suppress(BrokenPipeError):
+            self._pipe.close()
+
+
 @contextmanager
-def _elsewhere(part: Part) -> Iterator[Callable[[], Found]]:
-    """Check a part in a process of its own; gives a function that waits for what it found."""
-    with tempfile.TemporaryFile() as given, tempfile.TemporaryFile() as found:
-        pickle.dump(part, given, protocol=5)
-        given.seek(0)
-        process = subprocess.Popen(
-            [sys.executable, "-c", f"from {__name__} import answer; answer()"], stdin=given, stdout=found
-        )
+def helper_for(path: Path) -> Iterator[Helper | None]:
+    """A helper, starting while the file is read, if the file is large and there is a core for it."""
+    if not path.is_file() or path.stat().st_size < LARGE or (os.cpu_count() or 1) < 2:
+        yield None
+        return
+    with tempfile.TemporaryFile() as answers:
+        helper = Helper(answers)
         try:
-            yield lambda: _found_by(process, found)
+            yield helper
         finally:
-            process.kill()
-            process.wait()
-
-
-def _found_by(process: "subprocess.Popen[bytes]", found: IO[bytes]) -> Found:
-    if process.wait() != 0:
-        raise RuntimeError(f"the process that checked half of the file ended with {process.returncode}")
-    found.seek(0)
-    result: Found = pickle.load(found)
-    return result
+            helper.stop()
 
 
 def answer() -> None:

@@ -73,8 +73,12 @@ def take_observations(
     builder = Builder(frame, checked_source(source, frame), history)
     if keep_good is not None:
         refusals.check_target(keep_good, path)
-    taking = _open(store, path, frame)
-    table, twice = _once(_checked(taking, builder, progress), taking)
+    with checking.helper_for(path) as helper:
+        taking = _open(store, path, frame)
+        part = checking.Part(taking.whole, taking.wanted, builder)
+        tables, refused = checking.check(part, helper, progress)
+        taking.refused += refused
+    table, twice = _once(_by_key(tables, builder), taking)
     taking.stop_if_refused(keep_good)
     with store.writing() as c:
         counts = _add(c, taking, table, builder, revise)
@@ -171,10 +175,8 @@ def _put_aside(store: Store, cases: list[Case], frame: Frame) -> str | None:
 # --- 2. rows that can be taken -----------------------------------------------------------------
 
 
-def _checked(taking: _Taking, builder: Builder, progress: Progress | None) -> pa.Table:
-    """The good rows as the store keeps them, sorted by key; the others join the refused."""
-    tables, refused = checking.check(checking.Part(taking.whole, taking.wanted, builder), progress)
-    taking.refused += refused
+def _by_key(tables: list[pa.Table], builder: Builder) -> pa.Table:
+    """All blocks as one table, sorted by key."""
     if not tables:
         return pa.table({"key": pa.array([], pa.string())})
     table = builder.join(tables).combine_chunks()

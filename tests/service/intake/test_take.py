@@ -308,9 +308,18 @@ def test_a_large_file_is_checked_by_two_processes_to_the_same_end(
     assert whole.value.refusals == halved.value.refusals
     assert [each.row for each in halved.value.refusals] == [4, 20]
     assert take(store, path, keep_good=tmp_path / "rest.csv") == NONE | {"new": 18, "refused": 2}
-    monkeypatch.setattr(checking, "LARGE", 1000)
+    monkeypatch.setattr(checking, "LARGE", 10**9)
     assert take(store, path, keep_good=tmp_path / "rest.csv") == NONE | {"same": 18, "refused": 2}
     assert all(content_digest(each) == each.digest for each in all_of(store))
+
+
+def test_a_large_file_is_taken_where_no_second_process_can_work(
+    store: Store, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(checking, "LARGE", 10)
+    monkeypatch.setattr(checking.sys, "executable", "/bin/false")
+    settle(store)
+    assert take(store, write(tmp_path, [row(record_id=str(n)) for n in range(5)]))["new"] == 5
 
 
 def test_a_large_file_with_rows_without_a_record_id_is_checked_in_one(
