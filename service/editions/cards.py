@@ -157,10 +157,10 @@ def cautions_of(pest: Pest, book: Book) -> list[Sentence]:
 
 
 def _found(line: Line) -> list[Piece]:
-    finds, looks = line.own["found"]
+    finds, looks, own = line.own["found"]
     if not looks:
         return []
-    text = f"{say.capital(say.of_looks(finds, looks))} within 20 km."
+    text = f"{say.capital(say.of_looks(finds, looks))} within 20 km{say.yours(own, looks)}."
     return [Piece("what", Sentence(text, "reader:found"), "What others found")]
 
 

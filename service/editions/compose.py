@@ -182,11 +182,10 @@ def _ask(bundle: Bundle, seat: Seat, scene: Scene) -> Line:
     chosen = _best(bundle)
     counted = chosen[0].paddock
     stands = sorted(bundle.stands, key=lambda stand: counted is not None and stand.paddock != counted)
-    found = seat.counts[bundle.pest]
     own = _stand_values(stands)
     own["minutes"] = scene.book.pests[bundle.pest].minutes.value
     own["near"] = [_near_value(each.near) for each in chosen]
-    own["found"] = [found.near_finds, found.near_looks]
+    own["found"] = _found(seat.counts[bundle.pest]) if _may_count(bundle.pest, scene) else [0, 0, 0]
     names = [scene.known.paddocks[each.paddock].name for each in chosen if each.paddock]
     if names:
         own["paddocks"] = names
@@ -238,21 +237,37 @@ def _around(seat: Seat, scene: Scene) -> list[Line]:
     """What others found, for the pests of the reader's crops; finds near first."""
     lines = []
     for pest, found in seat.counts.items():
-        said = scene.counted.get(pest, ())
-        if said and said[0].wording == "looks":
+        if said := _counted(pest, scene):
             rank_by = (-found.near_finds, -found.near_looks, pest)
-            own = {"found": [found.near_finds, found.near_looks]}
-            lines.append((rank_by, Line(tuple(each.hash for each in said), own)))
+            lines.append((rank_by, Line(tuple(each.hash for each in said), {"found": _found(found)})))
     return [line for _, line in sorted(lines, key=lambda pair: pair[0])][:MOST_AROUND]
+
+
+def _counted(pest: str, scene: Scene) -> Sequence[Statement]:
+    """The counts of a pest and what to hold against them; nothing where the counts are held."""
+    said = scene.counted.get(pest, ())
+    return said if said and said[0].wording == "looks" else ()
+
+
+def _may_count(pest: str, scene: Scene) -> bool:
+    """Whether a reader may be told how often a pest was found: always of their own looks."""
+    return not scene.seen.shown or bool(_counted(pest, scene))
+
+
+def _found(counts: Counts) -> list[int]:
+    return [counts.near_finds, counts.near_looks, counts.near_own]
 
 
 def _own(seat: Seat, scene: Scene) -> dict[str, Any]:
     """What the reader is told where nothing is asked: how much looking stands behind the silence."""
-    found = seat.counts.values()
+    told = {pest: each for pest, each in seat.counts.items() if _may_count(pest, scene)}
     own: dict[str, Any] = {
-        "looks": sum(each.near_looks for each in found),
-        "finds": sum(each.near_finds for each in found),
+        "looks": sum(each.near_looks for each in seat.counts.values()),
+        "yours": sum(each.near_own for each in seat.counts.values()),
+        "finds": sum(each.near_finds for each in told.values()),
     }
+    if any(each.near_looks for pest, each in seat.counts.items() if pest not in told):
+        own["kept"] = True  # looks of which it may not be said whether they found something
     if not scene.seen.shown:
         own["hidden"] = True
     elif unlooked := [pest for pest, each in seat.counts.items() if not each.looks]:

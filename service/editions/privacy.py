@@ -44,6 +44,7 @@ class Counts:
 
     near_finds: int = 0
     near_looks: int = 0
+    near_own: int = 0  # of the looks near, how many are the reader's own
     finds: int = 0
     looks: int = 0
 
@@ -212,13 +213,14 @@ def counts(seen: View, pest: str, reader: Subscriber, here: Vantage, near: Mappi
     own = own_looks(seen, reader, pest)
     close = [look for look in own if here.within(look.place, NEAR_KM)]
     if not seen.shown:
-        return Counts(_finds(close), len(close), _finds(own), len(own))
+        return Counts(_finds(close), len(close), len(close), _finds(own), len(own))
     spots = seen.tallies.get(pest, {})
     there = [tally for spot, tally in spots.items() if is_near(spot, near)]
     moved = [look for look in own if is_near(seen.spot(look.rows, look.place.cell), near)]
     return Counts(
         sum(tally.finds for tally in there) - _finds(moved) + _finds(close),
         sum(tally.looks for tally in there) - len(moved) + len(close),
+        len(close),
         sum(tally.finds for tally in spots.values()),
         sum(tally.looks for tally in spots.values()),
     )

@@ -78,6 +78,13 @@ def of_looks(finds: int, looks: int) -> str:
     return f"found in {finds:,} of {looks:,} looks"
 
 
+def yours(own: int, looks: int) -> str:
+    """How many of some looks are the reader's own, to stand behind them: *, 2 of them yours*."""
+    if not own:
+        return ""
+    return ", your own" if own == looks else f", {own:,} of them yours"
+
+
 def listed(words: Sequence[str], joint: str = "and") -> str:
     """Such as *a, b and c*."""
     return f" {joint} ".join(filter(None, [", ".join(words[:-1]), words[-1]]))

@@ -15,7 +15,10 @@ from service.editions.cards import card, cautions_of
 from service.editions.told import origin, told, verdict
 
 USUAL = "Your usual crop checks still stand."
-HOW = "Worked out from looks that people reported, weather records and published rules."
+HOW = (
+    "Worked out from looks that people reported (one visit for one pest is one look), weather records and "
+    "published rules."
+)
 NOT_KNOWN = "It is not yet known how often asks like these are right."
 
 
@@ -54,7 +57,7 @@ def sentences(shown: SlipView) -> list[Sentence]:
 
 def _subject(cards: Sequence[Card], slip: Slip, book: Book) -> Sentence:
     if not cards:
-        known = "no special look asked" if _looked(slip) else "nobody looked within 20 km"
+        known = "no special look asked" if _looked(slip) else "nobody looked for your crops' pests near you"
         return Sentence(f"This week: {known}; your usual crop checks still stand", "reader:looks")
     asks = [f"{_verb(each)} {book.pests[each.pest].plural}" for each in cards]
     return Sentence(f"This week: {say.listed(asks)}, about {_minutes(cards)} minutes", "reader:asks")
@@ -72,9 +75,13 @@ def _answer(cards: Sequence[Card], slip: Slip, book: Book) -> Sentence:
     if cards:
         pests = ", then ".join(book.pests[each.pest].plural for each in cards)
         return Sentence(f"{_tasks(cards)}, about {_minutes(cards)} minutes: {pests}.", "reader:asks")
-    if _looked(slip):
-        return Sentence(f"No special look this week. {USUAL}", "reader:looks")
-    return Sentence(f"Nobody looked within 20 km, so we can't point you to one pest this week. {USUAL}", "reader:looks")
+    if not _looked(slip):
+        text = "Nobody looked for your crops' pests within 20 km, so we can't point you to one this week."
+    elif slip.own["finds"]:
+        text = "We ask for no special look this week, though pests of your crops were found within 20 km."
+    else:
+        text = "No special look this week."
+    return Sentence(f"{text} {USUAL}", "reader:looks")
 
 
 def _looked(slip: Slip) -> bool:
@@ -126,18 +133,21 @@ def _mind(line: Line, statements: Mapping[str, Statement], book: Book) -> Senten
 
 def _silence(slip: Slip, head: Head) -> list[Sentence]:
     """Where nothing is asked: how much looking stands behind that. Never an all-clear."""
-    looks, finds = slip.own["looks"], slip.own["finds"]
+    looks = slip.own["looks"]
     if slip.own.get("hidden"):
         return [_hidden(head)]
     if not looks:
-        text = "Nobody looked within 20 km in the last 14 days, so this says nothing about pests there."
+        text = (
+            "Nobody looked for your crops' pests within 20 km in the last 14 days, so this says nothing of them there."
+        )
         return [Sentence(text, "reader:looks")]
-    made = f"in the last 14 days, {say.how_many(looks, 'look')} {'was' if looks == 1 else 'were'} made within 20 km"
-    if not finds:
+    were = "was" if looks == 1 else "were"
+    made = f"in the last 14 days, {say.how_many(looks, 'look')}{say.yours(slip.own['yours'], looks)}"
+    made += f"{',' if slip.own['yours'] else ''} {were} made within 20 km"
+    if not slip.own["finds"] and not slip.own.get("kept"):
         text = f"Nothing was reported near you: {made}. That does not rule pests out."
     else:
-        asked = "At the stages we know for your crops, we ask for no special look; that does not rule pests out."
-        text = f"{say.capital(made)}. {asked}"
+        text = f"{say.capital(made)}. Our rules ask for no special look this week; that does not rule pests out."
     return [Sentence(text, "reader:looks")]
 
 
@@ -174,7 +184,7 @@ def _counts(statement: Statement, near: Sequence[int], book: Book) -> str:
     district = f"{say.of_looks(finds, looks)} in the district in the last {days} days"
     if not near[1]:
         return f"{many}: nobody looked within 20 km; {district}."
-    here = f"{many}: {say.of_looks(*near)} within 20 km in the last {days} days"
+    here = f"{many}: {say.of_looks(*near[:2])} within 20 km in the last {days} days{say.yours(near[2], near[1])}"
     return f"{here}." if near[1] == looks else f"{here}; {finds:,} of {looks:,} in the whole district."
 
 

@@ -12,6 +12,7 @@ from service.editions.compose import compose
 from tests.builders import NOW, TODAY, a_holding, a_paddock, a_postcode
 from tests.service.editions import cast
 from tests.service.editions.cast import CUTWORM, FLEA, MITE
+from tests.service.editions.plain import printed
 
 SOWN: dict[str, Any] = {"crop": "canola", "sown_on": date(2026, 4, 20)}
 
@@ -285,6 +286,26 @@ def test_a_held_statement_is_kept_but_reaches_nobody() -> None:
     assert hatch in composed.statements
     assert hatch not in canonical(composed.slips["s1"])
     assert hatch in canonical(compose(known, signals, cast.BOOK, [cast.reader()]).slips["s1"])
+
+
+def test_held_counts_are_said_nowhere() -> None:
+    """Not on the card either, nor by a digest that says that nothing was reported."""
+    rows = [cast.look(1, True), cast.look(2, False, pest=FLEA)]
+    known = cast.district(rows, paddocks=cast.fields(p0=SOWN))
+    composed = compose(known, [], cast.BOOK, [])
+    counts = [n for n, s in composed.statements.items() if s.wording == "looks" and s.pest == MITE]
+    asked = compose(known, [cast.hatch()], cast.BOOK, [cast.reader()], frozenset(counts)).slips["s1"]
+    assert asked.asks[0].own["found"] == [0, 0, 0]
+    quiet = compose(known, [], cast.BOOK, [cast.reader()], frozenset(counts))
+    assert quiet.slips["s1"].own | {"unlooked": []} == {
+        "looks": 2,
+        "yours": 0,
+        "finds": 0,
+        "kept": True,
+        "unlooked": [],
+    }
+    assert "Nothing was reported" not in printed(cast.said(quiet))
+    assert "were found" not in printed(cast.said(quiet))
 
 
 def test_a_slip_is_small() -> None:

@@ -167,7 +167,7 @@ def test_with_too_few_farms_nothing_of_others_is_shown() -> None:
     few = cast.edition(rows, [cast.first_seen(rows[0])], holdings=cast.farms()[:4])
     slip = few.slips["s1"]
     assert (slip.asks, slip.mind, slip.around) == ((), (), ())
-    assert slip.own == {"looks": 0, "finds": 0, "hidden": True}
+    assert slip.own == {"looks": 0, "yours": 0, "finds": 0, "hidden": True}
     assert "can't be shown" in printed(cast.said(few))
 
 
@@ -181,21 +181,20 @@ def test_a_farm_that_joined_after_the_season_opened_hides_nobody() -> None:
 def test_the_readers_own_rows_stay_as_they_are() -> None:
     own = cast.look(0, True)
     slip = cast.slip([own], holdings=cast.farms()[:4])
-    assert slip.own["looks"] == 1
-    assert slip.own["finds"] == 1
+    assert slip.own == {"looks": 1, "yours": 1, "finds": 1, "hidden": True}
 
 
 def test_own_looks_are_counted_once() -> None:
     rows = [cast.look(0, True), cast.look(1, False)]
     counted = cast.slip(rows).around[0].own["found"]
-    assert counted == [1, 2]
+    assert counted == [1, 2, 1]
 
 
 def test_a_look_far_off_is_not_near() -> None:
     far = [a_paddock(f"q{i}", holding=f"h{i}", place=cast.at(60 + i / 10, 0)) for i in range(5)]
     row = an_observation("csv:far", place=far[0].place, paddock="q0", reporter="x")
     slip = cast.slip([row], paddocks=[*cast.fields(), *far])
-    assert slip.around[0].own["found"] == [0, 0]
+    assert slip.around[0].own["found"] == [0, 0, 0]
     assert "nobody looked within 20 km; found in the one look in the district" in printed(
         cast.said(cast.edition([row], paddocks=[*cast.fields(), *far]))
     )

@@ -212,7 +212,35 @@ def test_a_first_find_says_the_looking_behind_it() -> None:
 
 
 def test_where_nobody_looked_it_says_so() -> None:
-    assert "Nobody looked within 20 km" in text()
+    assert "Nobody looked for your crops' pests within 20 km" in text()
+
+
+def test_looks_for_a_pest_of_other_crops_are_no_looks_for_the_readers() -> None:
+    """Somebody looked, but for cutworms, which the catalogue names no risk of in pasture."""
+    pasture = cast.fields(p0={"crop": "pasture"})
+    rows = [cast.look(1, True, pest=CUTWORM)]
+    shown = cast.said(cast.edition(rows, readers=[cast.reader(crops=())], paddocks=pasture))
+    assert "Nobody looked within" not in printed(shown)
+    assert "Nobody looked for your crops' pests within 20 km" in printed(shown)
+
+
+def test_the_readers_own_looks_are_called_theirs() -> None:
+    rows = [cast.look(0, False, ago=9), cast.look(1, False), cast.look(2, False, pest=FLEA)]
+    said = text(rows=rows)
+    assert "found in 0 of 2 looks within 20 km in the last 14 days, 1 of them yours." in said
+    assert "in the last 14 days, 3 looks, 1 of them yours, were made within 20 km." in said
+    assert "Lucerne fleas: not found in the one look within 20 km in the last 14 days." in said
+    alone = text(cast.hatch(), rows=rows[:1])
+    assert "Not found in the one look within 20 km, your own." in alone
+    assert "yours" not in text(rows=rows[1:])
+
+
+def test_finds_near_are_not_passed_over_where_nothing_is_asked() -> None:
+    """No rule speaks, whatever the stage: the digest says so, and first that pests were found."""
+    shown = cast.said(cast.edition([cast.look(1, True), cast.look(2, False)]))
+    assert shown.answer.text.startswith("We ask for no special look this week, though pests of your crops were found")
+    assert "Our rules ask for no special look this week; that does not rule pests out." in printed(shown)
+    assert "stages we know" not in printed(shown)
 
 
 def test_before_the_crop_is_up_the_ask_points_elsewhere() -> None:
@@ -293,7 +321,9 @@ def test_must_sentences_stand_even_on_a_full_card(stage: dict[str, Any]) -> None
     """A pest whose texts are as long as they may get: what a look needs is not moved away."""
     composed = cast.edition([], [cast.hatch()])
     (name,) = composed.statements
-    line = Line((name,), {"crop": "canola", "minutes": 10, "near": ["own"], "found": [1, 9], "dressed": True, **stage})
+    line = Line(
+        (name,), {"crop": "canola", "minutes": 10, "near": ["own"], "found": [1, 9, 0], "dressed": True, **stage}
+    )
     long = replace(cast.BOOK.pests[MITE], when=(Sourced("On a day " * 9, "C", ""),))
     made = card(line, composed.statements, replace(cast.BOOK, pests=cast.BOOK.pests | {MITE: long}))
     said = " ".join(each.text for each in made.what)
