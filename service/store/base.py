@@ -8,6 +8,7 @@ Reading and writing never mix: `Store.reading()` gives a snapshot, `Store.writin
 """
 
 import fcntl
+import os
 import sqlite3
 import time
 from collections.abc import Iterator
@@ -16,11 +17,11 @@ from datetime import UTC, datetime, timedelta
 from pathlib import Path
 from typing import Any
 
-from sqlalchemy import BigInteger, Connection, Dialect, Engine, MetaData, create_engine, event, make_url
-from sqlalchemy.exc import ArgumentError, DBAPIError, OperationalError
+from sqlalchemy import URL, BigInteger, Connection, Dialect, Engine, MetaData, create_engine, event, make_url
+from sqlalchemy.exc import ArgumentError, DBAPIError, IntegrityError, OperationalError
 from sqlalchemy.types import TypeDecorator
 
-from service.errors import StoreBusy, StoreDown
+from service.errors import StoreBusy, StoreDown, Unreachable
 
 metadata = MetaData(
     naming_convention={
@@ -69,13 +70,11 @@ class Store:
     @classmethod
     def open(cls, url: str, busy_s: int = 30) -> "Store":
         """Open the store at a URL; StoreDown with the remedy where that can't be done."""
-        try:
-            parsed = make_url(url)
-        except ArgumentError as error:
-            raise StoreDown(f"store.url {url!r} is not a database URL; see: leafturn init") from error
+        parsed = parsed_url(url)
         if parsed.get_backend_name() == "sqlite":
-            return cls(_sqlite(url, parsed.database, busy_s), busy_s)
-        return cls(create_engine(parsed.set(drivername="postgresql+psycopg"), pool_pre_ping=True), busy_s)
+            return cls(_sqlite(parsed, busy_s), busy_s)
+        driver = parsed.set(drivername="postgresql+psycopg")
+        return cls(create_engine(driver, pool_pre_ping=True, hide_parameters=True), busy_s)
 
     @property
     def is_sqlite(self) -> bool:
@@ -84,13 +83,13 @@ class Store:
     @contextmanager
     def reading(self) -> Iterator[Connection]:
         """One consistent view of the store."""
-        with _in_own_words(), self._connect(write=False) as connection, connection.begin():
+        with in_own_words(), self._connect(write=False) as connection, connection.begin():
             yield connection
 
     @contextmanager
     def writing(self) -> Iterator[Connection]:
         """The write transaction: all of it is kept, or none."""
-        with _in_own_words(), self._connect(write=True) as connection, connection.begin():
+        with in_own_words(), self._connect(write=True) as connection, connection.begin():
             yield connection
 
     @contextmanager
@@ -104,7 +103,7 @@ class Store:
             with _file_lock(self.engine.url.database, self._busy_s):
                 yield
             return
-        with _in_own_words(), self._connect(write=True) as connection:
+        with in_own_words(), self._connect(write=True) as connection:
             connection.execution_options(isolation_level="AUTOCOMMIT")
             connection.exec_driver_sql(f"SET lock_timeout = '{self._busy_s}s'")
             connection.exec_driver_sql(f"SELECT pg_advisory_lock({_ARRIVALS})")
@@ -124,10 +123,20 @@ class Store:
         return self.engine.connect().execution_options(**options)
 
 
-def _sqlite(url: str, database: str | None, busy_s: int) -> Engine:
-    if database and database != ":memory:":
-        Path(database).parent.mkdir(parents=True, exist_ok=True)
-    engine = create_engine(url, connect_args={"timeout": busy_s})
+def parsed_url(url: str) -> URL:
+    """The parts of a store's URL; StoreDown, without repeating what may hold a password, where it is none."""
+    try:
+        parsed = make_url(url)
+        if parsed.get_backend_name() in ("sqlite", "postgresql"):
+            return parsed
+    except (ArgumentError, ValueError):
+        pass
+    raise StoreDown("store.url is no URL of a store; write sqlite:///path, or postgresql://user@host/name")
+
+
+def _sqlite(url: URL, busy_s: int) -> Engine:
+    _make_private(url.database)
+    engine = create_engine(url, connect_args={"timeout": busy_s}, hide_parameters=True)
 
     @event.listens_for(engine, "connect")
     def _set_up(connection: sqlite3.Connection, _record: object) -> None:
@@ -143,34 +152,71 @@ def _sqlite(url: str, database: str | None, busy_s: int) -> Engine:
     return engine
 
 
+def _make_private(database: str | None) -> None:
+    """See that the file is there and its owner's alone; what SQLite writes beside it gets the same mode."""
+    if not database or database == ":memory:":
+        return
+    try:
+        Path(database).parent.mkdir(parents=True, exist_ok=True)
+        os.close(os.open(database, os.O_RDWR | os.O_CREAT, 0o600))
+    except OSError as error:
+        raise _can_not_keep(database, error) from error
+
+
+def _can_not_keep(database: str, error: OSError) -> StoreDown:
+    return StoreDown(f"the store can't be kept in {database}: {error.strerror}; mend that, or change store.url")
+
+
 @contextmanager
 def _file_lock(database: str | None, busy_s: int) -> Iterator[None]:
     """A lock beside the store's file; the operating system lets go of it when the process ends."""
     if not database or database == ":memory:":
         yield
         return
-    with open(f"{database}-arrivals", "w", encoding="ascii") as file:
-        for _ in range(busy_s * 20):
-            try:
-                fcntl.flock(file, fcntl.LOCK_EX | fcntl.LOCK_NB)
-                break
-            except BlockingIOError:
-                time.sleep(0.05)
-        else:
-            raise StoreBusy("another process is taking a file in; try again when it is done")
+    try:
+        handle = os.open(f"{database}-arrivals", os.O_RDWR | os.O_CREAT, 0o600)
+    except OSError as error:
+        raise _can_not_keep(database, error) from error
+    try:
+        _wait_for(handle, busy_s)
         yield
+    finally:
+        os.close(handle)
+
+
+def _wait_for(handle: int, busy_s: int) -> None:
+    for _ in range(busy_s * 20):
+        try:
+            return fcntl.flock(handle, fcntl.LOCK_EX | fcntl.LOCK_NB)
+        except BlockingIOError:
+            time.sleep(0.05)
+    raise StoreBusy("another process is taking a file in; try again when it is done")
 
 
 @contextmanager
-def _in_own_words() -> Iterator[None]:
+def in_own_words() -> Iterator[None]:
     """Outside errors become ours here and nowhere else."""
     try:
         yield
-    except OperationalError as error:
-        if any(word in str(error) for word in ("locked", "busy", "lock timeout")):
-            raise StoreBusy("another process is writing to the store; try again in a moment") from error
-        raise StoreDown(f"the store did not answer: {error.orig}") from error
     except DBAPIError as error:
-        if error.connection_invalidated:
-            raise StoreDown(f"the store closed the connection: {error.orig}") from error
-        raise
+        if (ours := _ours(error)) is None:
+            raise
+        raise ours from error
+
+
+_HELD_UP = frozenset({"40001", "40P01", "55P03"})  # serialization failure, deadlock, lock not available
+_TWICE = "23505"  # unique violation (SQLSTATE codes of SQL and of PostgreSQL's appendix A)
+
+
+def _ours(error: DBAPIError) -> Unreachable | None:
+    """Our word for what the database said; never with values, which may be somebody's."""
+    words, code = " ".join(str(error.orig).split()), getattr(error.orig, "sqlstate", None)
+    if code in _HELD_UP or (isinstance(error, OperationalError) and ("locked" in words or "busy" in words)):
+        return StoreBusy("another process is writing to the store; try again in a moment")
+    if isinstance(error, IntegrityError) and (code == _TWICE or "UNIQUE constraint" in words):
+        return StoreBusy("another process kept the same at the same moment, and nothing was kept here; run it again")
+    if isinstance(error, OperationalError) or error.connection_invalidated:
+        return StoreDown(f"the store did not answer: {words}")
+    if "not a database" in words or "malformed" in words:
+        return StoreDown(f"the store is damaged or no store of ours ({words}); bring back a copy, or change store.url")
+    return None

@@ -11,9 +11,9 @@ from alembic.runtime.migration import MigrationContext
 from alembic.script import ScriptDirectory
 from sqlalchemy import Connection
 
-from service.errors import StoreDown
+from service.errors import StoreDown, WrongState
 from service.store import audit, editions, jobs, network, observations, outbox, reportables, rules, signals, weather
-from service.store.base import Store, metadata
+from service.store.base import Store, in_own_words, metadata
 
 TABLES = (audit, editions, jobs, network, observations, outbox, reportables, rules, signals, weather)
 _UPGRADING = 7_203_611  # any fixed number: the name of PostgreSQL's lock on upgrading
@@ -21,14 +21,18 @@ _UPGRADING = 7_203_611  # any fixed number: the name of PostgreSQL's lock on upg
 
 def upgrade(store: Store) -> None:
     """Bring the store to the newest shape; does nothing, quickly, where it has it already."""
-    if current(store) != ScriptDirectory.from_config(_config()).get_current_head():
-        migrate(store, "head")
+    scripts, at = ScriptDirectory.from_config(_config()), current(store)
+    if at == scripts.get_current_head():
+        return
+    if at is not None and at not in {script.revision for script in scripts.walk_revisions()}:
+        raise WrongState(f"the store was shaped by a newer version of this program ({at}); run that one, or a later")
+    migrate(store, "head")
 
 
 def migrate(store: Store, revision: str, *, down: bool = False) -> None:
     """Move the store to a revision, in one transaction."""
     step = command.downgrade if down else command.upgrade
-    with store.engine.connect() as c:
+    with in_own_words(), store.engine.connect() as c:
         raw = c.connection.driver_connection
         if store.is_sqlite and raw is not None:
             raw.execute("PRAGMA foreign_keys=OFF")

@@ -9,6 +9,7 @@ from sqlalchemy.exc import IntegrityError
 
 from rules.records import Ask
 from rules.slip import Edition, Head, Slip, Statement, statement_hash
+from service.errors import WrongState
 from service.store import editions, network, observations, schema
 from service.store.base import Store, metadata
 from tests.builders import FOUNDED, NOW, TODAY, a_district, a_holding, a_paddock, a_person, a_subscriber, an_observation
@@ -85,3 +86,14 @@ def test_foreign_keys_hold_again_after_a_step(empty: Store) -> None:
     schema.upgrade(empty)
     with pytest.raises(IntegrityError), empty.writing() as c:
         network.save_holdings(c, [a_holding(district="nowhere")], FOUNDED)
+
+
+def test_a_store_of_a_newer_shape_is_left_alone(empty: Store) -> None:
+    schema.upgrade(empty)
+    fill(empty)
+    with empty.writing() as c:
+        c.exec_driver_sql("UPDATE alembic_version SET version_num = '9999'")
+    before = rows(empty)
+    with pytest.raises(WrongState, match="newer version of this program"):
+        schema.upgrade(empty)
+    assert rows(empty) == before
