@@ -11,11 +11,11 @@ from datetime import date
 from typing import Any
 
 from rules.book import Book, Pest
-from rules.records import Ask, Known, Signal, Subscriber
+from rules.records import Ask, Known, Look, Signal, Subscriber
 from rules.slip import Line, Slip, Statement
 from service.editions import effort, privacy, rank
 from service.editions.offers import Offer, joined, offers, told_crops
-from service.editions.privacy import DISTRICT, OWN, Counts, Near, View
+from service.editions.privacy import DISTRICT, OWN, Counts, Near, Vantage, View
 from service.editions.quiet import quiet_until
 from service.editions.rank import Bundle, Candidate
 from service.editions.stands import Stages, Stand, any_stage, at_risk, stands
@@ -79,6 +79,7 @@ class Seat:
     """One reader's place in the scene."""
 
     reader: Subscriber
+    here: Vantage
     cells: frozenset[int]
     near: Mapping[int, Near]
     stands: Sequence[Stand]
@@ -92,7 +93,7 @@ def _seat(reader: Subscriber, scene: Scene) -> Seat:
     names = {stand.crop for stand in crops}
     pests = sorted(id for id, pest in scene.book.pests.items() if any(risk.crop in names for risk in pest.risks))
     counts = {pest: privacy.counts(scene.seen, pest, reader, here, near) for pest in pests}
-    return Seat(reader, privacy.own_cells(reader, scene.known), near, crops, counts)
+    return Seat(reader, here, privacy.own_cells(reader, scene.known), near, crops, counts)
 
 
 def _slip(reader: Subscriber, scene: Scene) -> Slip:
@@ -148,13 +149,19 @@ def _at_risk(
     for pest in sorted({candidate.pest for candidate in candidates}):
         entry = scene.book.pests[pest]
         newest = _newest(pest, candidates, seat, scene)
-        looks = privacy.own_looks(scene.seen, seat.reader, pest)
+        looks = _looks_at_home(pest, seat, scene)
         risky = [stand for stand in seat.stands if at_risk(entry, stand)]
         until = [quiet_until(s, entry, looks, newest, scene.stages, scene.known.today) for s in risky]
         awake[pest] = [_placed(s, entry) for s, day in zip(risky, until, strict=True) if day is None]
         if risky and not awake[pest]:
             resting[pest] = min(day for day in until if day is not None)
     return awake, resting
+
+
+def _looks_at_home(pest: str, seat: Seat, scene: Scene) -> list[Look]:
+    """The looks that may quiet an ask: on the reader's own place."""
+    found = privacy.own_looks(scene.seen, seat.reader, pest)
+    return [look for look in found if privacy.at_home(look, seat.reader, scene.known, seat.here)]
 
 
 def _newest(pest: str, candidates: Sequence[Candidate], seat: Seat, scene: Scene) -> date:

@@ -17,6 +17,7 @@ from rules.records import Effort, Known, Look, Paddock, Place, Subscriber
 from service import places
 
 NEAR_KM = 20
+AT_HOME_KM = 5  # so near to the reader's place, a look that names no paddock may be of it; our choice
 RECENT_DAYS = 14
 BANDS_KM = (5, 10, 20)
 # Mean edge of an H3 hexagon by resolution [km] (the table in H3's documentation), rounded: how far the
@@ -206,6 +207,15 @@ def own_looks(seen: View, reader: Subscriber, pest: str | None = None) -> list[L
     found = [look for paddock in reader.paddocks for look in seen.by_paddock.get(paddock, ())]
     found += seen.by_reporter.get(reader.person or "", ())
     return [look for look in dict.fromkeys(found) if pest in (None, look.pest)]
+
+
+def at_home(look: Look, reader: Subscriber, known: Known, here: Vantage) -> bool:
+    """Whether a look of the reader's was on their own place, as far as is known; not on that of someone else."""
+    if look.paddock is None:
+        return here.within(look.place, AT_HOME_KM if reader.paddocks else NEAR_KM)
+    paddock = known.paddocks.get(look.paddock)
+    theirs = paddock is not None and reader.holding is not None and paddock.holding == reader.holding
+    return look.paddock in reader.paddocks or theirs
 
 
 def counts(seen: View, pest: str, reader: Subscriber, here: Vantage, near: Mapping[int, Near]) -> Counts:

@@ -14,6 +14,7 @@ from rules.records import Known, Observation, Paddock, Subscriber
 UP = 9  # BBCH and Zadoks: the crop breaks the surface
 # A pest whose risk begins by then may be waiting for the crop on weeds and pasture edges. Our choice.
 WAITS_UNTIL = 10
+LAST_FOR_YEARS = frozenset({"lucerne", "pasture"})  # when such a stand was sown or came up may be long ago
 
 
 @dataclass(frozen=True, slots=True)
@@ -31,7 +32,7 @@ class Stages:
     """Crop stages of a district's paddocks on any day, each worked out once."""
 
     def __init__(self, known: Known) -> None:
-        self._paddocks = known.paddocks
+        self._paddocks = {id: _this_seasons(paddock, known.season_from) for id, paddock in known.paddocks.items()}
         self._reports: Mapping[str, list[Observation]] = defaultdict(list)
         for row in known.observations:
             fresh = known.season_from <= row.day and row.knowable_from <= known.as_of
@@ -46,6 +47,14 @@ class Stages:
             reports = [row for row in self._reports.get(paddock, ()) if row.day <= day]
             self._done[key] = _stand(_with_crop(self._paddocks[paddock], reports), reports, day)
         return self._done[key]
+
+
+def _this_seasons(paddock: Paddock, opened: date) -> Paddock:
+    """A paddock without the days of an earlier season's crop: nobody has said yet how this one stands."""
+    if paddock.crop in LAST_FOR_YEARS:
+        return paddock
+    sown, up = (day if day and day >= opened else None for day in (paddock.sown_on, paddock.up_on))
+    return replace(paddock, sown_on=sown, up_on=up)
 
 
 def _with_crop(paddock: Paddock, reports: Sequence[Observation]) -> Paddock:

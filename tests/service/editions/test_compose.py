@@ -100,6 +100,9 @@ def test_a_pest_that_no_crop_of_the_readers_minds_is_not_mentioned() -> None:
         (SOWN | {"up_on": date(2026, 5, 1)}, "up"),
         ({"crop": "canola", "sown_on": TODAY + timedelta(days=3)}, "before"),
         ({"crop": "pasture"}, "any"),
+        # Days of last season's crop; this season opened on 15 February.
+        ({"crop": "canola", "sown_on": date(2025, 4, 20), "up_on": date(2025, 5, 2)}, "unknown"),
+        ({"crop": "lucerne", "sown_on": date(2023, 4, 20), "up_on": date(2023, 5, 2)}, "up"),
     ],
 )
 def test_how_far_a_crop_is_known_to_be_grown(paddock: dict[str, Any], expected: str) -> None:
@@ -184,6 +187,23 @@ def test_a_new_stage_wakes_it() -> None:
 def test_a_look_elsewhere_quiets_nothing_here() -> None:
     row = cast.look(1, False, ago=1, reporter="person0")
     assert cast.slip([row], [cast.hatch()], paddocks=cast.fields(p0=SOWN)).asks
+
+
+def test_a_look_that_names_no_paddock_quiets_only_near_home() -> None:
+    fields = cast.fields(p0=SOWN)
+    there = [cast.look(0, False, ago=1, paddock=None, place=cast.at(km, 0)) for km in (4, 6)]
+    assert not cast.slip([there[0]], [cast.hatch()], paddocks=fields).asks
+    assert cast.slip([there[1]], [cast.hatch()], paddocks=fields).asks
+
+
+def test_an_advisers_look_at_a_clients_quiets_nothing_at_home() -> None:
+    """The adviser takes the digest for a postcode, with no paddock of their own; p1 is a client's."""
+    row = cast.look(1, False, ago=1, reporter="person0")
+    for holding, quiet in ((None, False), ("h0", False), ("h1", True)):
+        adviser = cast.reader(paddocks=(), holding=holding)
+        here = {"9001": a_postcode(place=cast.at(0, 0))}
+        slip = cast.slip([row], [cast.hatch(cells=(cast.at(0, 0).cell,))], readers=[adviser], postcodes=here)
+        assert bool(slip.asks) != quiet
 
 
 # --- effort ----------------------------------------------------------------------------------------
