@@ -16,9 +16,10 @@ def quiet_until(
 ) -> date | None:
     """The day from which to look again, or None where nothing quiets the ask.
 
-    `looks` are the reader's recent ones for this pest, on their own place; `newest` is the day of the newest find near, or of
-    the newest thing that a rule saw (such as rain that starts activity). A look without a find quiets the ask
-    for the pest's re-look interval, but not past something newer, nor past a new stage of the crop.
+    `looks` are the reader's recent ones for this pest, on their own place; `newest` is the day of the newest
+    find near, or of the newest thing that a rule saw (such as rain that starts activity). A look without a
+    find quiets the ask for the pest's re-look interval, but not past something newer, nor past a new stage of
+    the crop.
     """
     there = [look for look in looks if _covers(look, stand)]
     last = max(there, key=lambda look: (look.day, look.found), default=None)

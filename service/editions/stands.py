@@ -6,10 +6,9 @@ from dataclasses import dataclass, replace
 from datetime import date
 from functools import partial
 
-from rules.stages import crop_stage
-
 from rules.book import Pest
 from rules.records import Known, Observation, Paddock, Subscriber
+from rules.stages import crop_stage
 
 UP = 9  # BBCH and Zadoks: the crop breaks the surface
 # A pest whose risk begins by then may be waiting for the crop on weeds and pasture edges. Our choice.
