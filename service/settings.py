@@ -1,10 +1,13 @@
 """One table of settings: name, type, default, help. One TOML file plus environment, read once, frozen.
 
 The environment wins over the file: `store.url` is LEAFTURN_STORE__URL. A secret may come from a file:
-`mail.password_file`, `keys_file`.
+`mail.password_file`, `keys_file`. Paths that do not begin at the root are taken from the folder of the file, so
+that a command means the same wherever it is run with `--settings`.
 """
 
+import os
 import secrets
+import tempfile
 import tomllib
 from collections.abc import Iterator
 from pathlib import Path
@@ -16,6 +19,9 @@ from pydantic_settings import BaseSettings, PydanticBaseSettingsSource, Settings
 from service.errors import BadSettings
 
 FILE_NAME = "leafturn.toml"
+_ADDRESS = r"^[!#-'*+./0-9=?A-Z^_`a-z{|}~-]+@[0-9A-Za-z.-]+$"  # bare: the name beside it is a setting of its own
+_LINK = r"^https?://[0-9A-Za-z.:\[\]-]+(/[!-;=?-~]*)?$"
+_SECRET = ("mail.password", "store.url")  # never repeated
 
 
 class _Group(BaseModel):
@@ -26,6 +32,7 @@ class StoreSettings(_Group):
     url: str = Field(
         "sqlite:///var/leafturn.db",
         description="Where everything is kept: sqlite:///path, or postgresql://user@host/name.",
+        repr=False,
     )
     busy_s: int = Field(30, ge=1, description="How long to wait for another writer [s].")
 
@@ -39,7 +46,7 @@ class MailSettings(_Group):
     user: str = Field("", description="User name, if the server asks for one.")
     password: str = Field("", description="Its password; better: password_file.", repr=False)
     password_file: str = Field("", description="A file that holds the password.")
-    sender: str = Field("digest@localhost", description="The address that the digests come from.")
+    sender: str = Field("digest@localhost", pattern=_ADDRESS, description="The address that the digests come from.")
     sender_name: str = Field("Leafturn digest", description="The name beside it.")
     timeout_s: float = Field(60.0, gt=0, description="Longest wait for one answer of the server [s].")
     connections: int = Field(4, ge=1, le=100, description="Connections kept open while sending.")
@@ -55,7 +62,9 @@ class DeliverySettings(_Group):
 
 
 class WebSettings(_Group):
-    base_url: str = Field("http://localhost:8765", description="How readers reach the pages, without a final slash.")
+    base_url: str = Field(
+        "http://localhost:8765", pattern=_LINK, description="How readers reach the pages, without a final slash."
+    )
     host: str = Field("127.0.0.1", description="The address the pages listen on.")
     port: int = Field(8765, ge=1, le=65535, description="The port the pages listen on.")
 
@@ -100,7 +109,7 @@ def read(path: Path | None = None) -> Settings:
     elif path is not None:
         raise BadSettings(f"there is no settings file {file}. Make one with: leafturn init {file}")
     try:
-        return Settings(**values)
+        return _anchored(Settings(**values), file.parent)
     except SettingsError as error:
         raise BadSettings(
             f"the environment can't be used: {error}. Set one value of a group: LEAFTURN_STORE__URL"
@@ -116,9 +125,46 @@ def _in_words(error: ValidationError, file: Path) -> str:
         if problem["type"] == "extra_forbidden":
             lines.append(f"{name}: there is no such setting; remove it, or check its spelling")
         else:
-            given = "" if name.endswith("password") else f" (given: {problem['input']!r})"
+            hidden = name in _SECRET or isinstance(problem["input"], dict | list)
+            given = "" if hidden else f" (given: {problem['input']!r})"
             lines.append(f"{name}: {problem['msg'].lower()}{given}")
     return f"settings from {file} and the environment can't be used:\n  " + "\n  ".join(lines)
+
+
+def _anchored(read: Settings, folder: Path) -> Settings:
+    """Settings whose paths are taken from a folder."""
+
+    def from_there(path: str) -> str:
+        return str(folder / path) if path else path
+
+    kind, slashes, path = read.store.url.partition(":///")
+    in_a_file = kind.startswith("sqlite") and path and not path.startswith((":memory:", "file:"))
+    url = f"{kind}{slashes}{from_there(path)}" if in_a_file else read.store.url
+    return read.model_copy(
+        update={
+            "data_dir": from_there(read.data_dir),
+            "keys_file": from_there(read.keys_file),
+            "store": read.store.model_copy(update={"url": url}),
+            "mail": read.mail.model_copy(update={"password_file": from_there(read.mail.password_file)}),
+        }
+    )
+
+
+def write_new(file: Path, text: str) -> bool:
+    """Write a file that only its owner may read: all of it or nothing. False, and no change, where there is one."""
+    file.parent.mkdir(parents=True, exist_ok=True)
+    handle, partial = tempfile.mkstemp(dir=file.parent, prefix=f".{file.name}-")
+    try:
+        with os.fdopen(handle, "w", encoding="utf-8") as opened:
+            opened.write(text)
+            opened.flush()
+            os.fsync(opened.fileno())
+        os.link(partial, file)
+    except FileExistsError:
+        return False
+    finally:
+        os.unlink(partial)
+    return True
 
 
 def keys(settings: Settings) -> list[str]:
@@ -126,9 +172,7 @@ def keys(settings: Settings) -> list[str]:
     file = Path(settings.keys_file)
     try:
         if not file.exists():
-            file.parent.mkdir(parents=True, exist_ok=True)
-            file.touch(mode=0o600)
-            file.write_text(secrets.token_urlsafe(48) + "\n", encoding="utf-8")
+            write_new(file, secrets.token_urlsafe(48) + "\n")  # of two who make them at once, both use the first's
         lines = file.read_text(encoding="utf-8").splitlines()
     except (OSError, UnicodeDecodeError) as error:
         raise BadSettings(f"keys_file can't be used: {error}. Name a file that this service may write") from error
