@@ -135,7 +135,7 @@ def _near(offer: Offer, seat: Seat) -> Near | None:
         return OWN if own else None
     if own:  # the reader has the exact count already
         return None
-    if offer.finders & {*seat.reader.paddocks, seat.reader.person}:
+    if offer.found_in & {*seat.reader.paddocks}:
         return OWN
     return DISTRICT if offer.spot is None else seat.near[offer.spot]
 

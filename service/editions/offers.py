@@ -24,7 +24,7 @@ class Offer:
     cells: frozenset[int] = frozenset()  # weather: readers with a paddock or postcode in one of these
     spot: int | None = None  # the public cell of someone's find
     paddock: str | None = None
-    finders: frozenset[str] = frozenset()
+    found_in: frozenset[str] = frozenset()  # the paddocks of a find
 
 
 def told_crops(signals: Sequence[Signal], known: Known, book: Book) -> dict[str, Crops]:
@@ -91,9 +91,9 @@ def _first_seen(signal: Signal, day: date, known: Known, seen: View) -> Iterator
         if row.key in keys and row.present and row.day == day:
             spots[seen.spot(sorted(keys), row.place.cell)].append(row)
     for spot, rows in spots.items():
-        finders = frozenset(row.reporter for row in rows) | {row.paddock for row in rows if row.paddock}
+        found_in = frozenset(row.paddock for row in rows if row.paddock)
         said = _statement(signal, "first_seen", {**figures, "spot": spot}, Ask.LOOK)
-        yield Offer(said, day, spot=spot, finders=finders)
+        yield Offer(said, day, spot=spot, found_in=found_in)
 
 
 def _cell(signal: Signal, known: Known) -> int:

@@ -82,6 +82,14 @@ def test_first_finds_of_one_day_are_each_told_from_their_own_place() -> None:
     assert [slip.asks[0].own["near"][0][0] for slip in slips.values()] == [5, 5]
 
 
+def test_a_find_of_the_readers_on_anothers_place_is_not_on_their_own() -> None:
+    row = cast.look(1, True, reporter="person0")
+    assert cast.slip([row], [cast.first_seen(row)]).asks[0].own["near"] == [[5, None, 10]]
+    assert cast.slip([row], [cast.first_seen(row)], readers=[cast.reader(paddocks=("p1",))]).asks[0].own["near"] == [
+        "own"
+    ]
+
+
 def test_a_pest_that_no_crop_of_the_readers_minds_is_not_mentioned() -> None:
     row = cast.look(1, True, pest=CUTWORM)  # the catalogue names no risk in pasture
     fields = cast.fields(p0={"crop": "pasture"})
