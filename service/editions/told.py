@@ -104,7 +104,12 @@ def _why_hatch(figures: Mapping[str, Any]) -> list[str]:
 
 
 def _why_count(figures: Mapping[str, Any]) -> list[str]:
-    return [f"Worked out from {say.how_many(figures['spots'], 'spot')} of your own count."]
+    said = [f"Worked out from {say.how_many(figures['spots'], 'spot')} of your own count."]
+    edge, middle = figures.get("edge_mean"), figures.get("middle_mean")
+    if edge is not None and middle is not None:
+        unit = say.A_UNIT[figures["unit"]]
+        said.append(f"At the edge {say.number(edge)} {unit}, in the middle {say.number(middle)}.")
+    return said
 
 
 def _why_counted_near(_figures: Mapping[str, Any]) -> list[str]:

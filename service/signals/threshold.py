@@ -5,7 +5,7 @@ number's unit is not compared at all.
 """
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import timedelta
 from typing import Any
 
@@ -73,26 +73,39 @@ def _at_risk(rule: Rule, pest: Pest, count: Count) -> bool:
 
 
 def _number(pest: Pest, count: Count) -> tuple[Threshold, float] | None:
-    """The number to compare with, and what brings the count to its unit; the count's own unit goes first."""
+    """The number to compare with, and what brings the count to its unit; the count's own unit goes first.
+
+    Where more numbers are in use, they are one whose doubt reaches from the lowest to the highest.
+    """
+    usable = [(each, factor) for each in _live(pest, count) if (factor := _factor(each, count)) is not None]
+    if not usable:
+        return None
+    first, factor = usable[0]
+    lows, highs = ([getattr(each, end) * factor / f for each, f in usable] for end in ("low", "high"))
+    weakest = min(usable, key=lambda pair: pair[0].mark)[0]  # C before S: the weaker mark speaks for all
+    return replace(first, low=min(lows), high=max(highs), mark=weakest.mark, source=weakest.source), factor
+
+
+def _live(pest: Pest, count: Count) -> list[Threshold]:
+    """The numbers that readers may be shown for the crop and stage; those in the count's own unit first."""
+    found = [each for each in pest.thresholds if each.mark in LIVE_MARKS and each.crop == count.crop]
+    found = [each for each in found if each.stage_from <= count.stage <= each.stage_to]
+    return sorted(found, key=lambda each: each.unit != count.row.unit)
+
+
+def _factor(number: Threshold, count: Count) -> float | None:
+    """What one of the count's unit is in the number's; None where there is no sound way from one to the other."""
     row, paddock = count.row, count.paddock
-    live = [
-        each
-        for each in pest.thresholds
-        if each.mark in LIVE_MARKS and each.crop == count.crop and each.stage_from <= count.stage <= each.stage_to
-    ]
-    for each in sorted(live, key=lambda each: each.unit != row.unit):
-        try:
-            factor = thresholds.convert(
-                1.0,
-                str(row.unit),
-                each.unit,
-                plants_per_m2=row.plants_per_m2 or paddock.plants_per_m2,
-                row_spacing_m=row.row_spacing_m or paddock.row_spacing_m,
-            )
-        except thresholds.NotConvertible:
-            continue  # no sound way: that number says nothing about this count
-        return each, factor
-    return None
+    try:
+        return thresholds.convert(
+            1.0,
+            str(row.unit),
+            number.unit,
+            plants_per_m2=row.plants_per_m2 or paddock.plants_per_m2,
+            row_spacing_m=row.row_spacing_m or paddock.row_spacing_m,
+        )
+    except thresholds.NotConvertible:
+        return None
 
 
 def _units_per_spot(row: Observation) -> float | None:
@@ -138,8 +151,8 @@ def _figures(
         "low": round(counted.low, 2),
         "high": round(counted.high, 2),
         "unit": threshold.unit,
-        "threshold_low": threshold.low,
-        "threshold_high": threshold.high,
+        "threshold_low": round(threshold.low, 2),
+        "threshold_high": round(threshold.high, 2),
         "verdict": said.verdict,
         "spots": counted.spots,
         "more_spots": said.more_spots,

@@ -164,6 +164,11 @@ def test_a_count_at_the_number() -> None:
     assert "Number: 10 a plant (a published study)." in said
 
 
+def test_edge_and_middle_are_told_apart() -> None:
+    count = cast.threshold(0, figures={"edge_mean": 13.5, "middle_mean": 14.33})
+    assert "At the edge 13.5 a plant, in the middle 14.3." in text(count, rows=[cast.look(0, True, stage=11)])
+
+
 def test_a_count_near_the_number_needs_more_samples() -> None:
     said = text(cast.threshold(0, "near"), rows=[cast.look(0, True, stage=11)])
     assert "Near the number: take more samples at 4 more spots." in said

@@ -132,6 +132,18 @@ def test_a_count_in_rows_is_brought_to_square_metres_by_the_row_spacing() -> Non
     assert (found.figures["threshold_low"], found.figures["threshold_high"]) == (2.0, 3.0)
 
 
+def test_where_two_numbers_are_in_use_the_count_is_set_against_both() -> None:
+    """Cereals: 2 in half a metre of row, or 2 to 3 in a square metre; both common practice."""
+    wheat: dict[str, Any] = {"crop": "wheat", "stage": 12, "row_spacing_m": 0.25}
+    (found,) = signals(worms(spots=(1.0, 0.0) * 5, count=0.5, **wheat))
+    # by hand: half a metre at 0.25 m is 0.125 m2, so 2 in a square metre are 0.25 in it
+    assert (found.figures["threshold_low"], found.figures["threshold_high"]) == (0.25, 2.0)
+    assert (found.figures["verdict"], found.figures["more_spots"]) == ("near", None)
+    (over,) = signals(worms(spots=(3.0, 2.0) * 5, count=2.5, **wheat))
+    assert over.figures["verdict"] == "at_or_above"
+    assert signals(worms(spots=(0.0,) * 9 + (0.1,), count=0.01, **wheat)) == []
+
+
 def test_the_row_spacing_may_be_the_paddocks() -> None:
     field = a_paddock(crop="canola", row_spacing_m=0.25)
     assert signals(worms(), paddocks=[field])[0].figures["mean"] == 12.0
