@@ -5,6 +5,7 @@
 3. They are compared with what the store knows by their keys, and the new ones are added.
 """
 
+import codecs
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
@@ -147,8 +148,11 @@ def unreadable(store: Store, path: Path, error: BadInput, *, clock: Clock) -> Ba
     """The refusal of a file of whatever kind that could not be read, after it was searched for listed pests.
 
     Raise what this gives in place of `error`: it names nothing that stands on a list, and begins with what
-    the reporter must read first.
+    the reporter must read first. A file that was searched already, and one of districts, whose lists hold these
+    names, are told as they are.
     """
+    if isinstance(error, RowsRefused) or path.suffix.lower() == ".toml":
+        return error
     try:
         frame = frame_of(store, Names.of(rulebook.load()), clock.now())
     except NotFound:  # no district yet, so no list
@@ -157,11 +161,24 @@ def unreadable(store: Store, path: Path, error: BadInput, *, clock: Clock) -> Ba
 
 
 def _told_apart(store: Store, path: Path, frame: Frame, error: BadInput) -> BadInput:
-    text = path.read_bytes().decode("latin-1") if path.is_file() else ""
+    text = _whatever_it_says(path) if path.is_file() else ""
     first = _put_aside(store, reportable.cases_in_text(text, path, frame), frame)
     words = reportable.showable(str(error), "the file is no table of observations; check its header and rows", frame)
-    told = [each for each in error.refusals if reportable.showable(each.value, "", frame) == each.value]
+    said = ((each, f"{each.field} {each.value} {each.remedy}") for each in error.refusals)
+    told = [each for each, text in said if reportable.showable(text, "", frame) == text]
     return RowsRefused(words, told, first)
+
+
+def _whatever_it_says(path: Path) -> str:
+    """The text of a file in whichever encoding it is; of one that is no text, its name."""
+    raw = path.read_bytes()
+    for encoding in ("utf-16" if raw[:2] in (codecs.BOM_UTF16_LE, codecs.BOM_UTF16_BE) else "utf-8-sig", "latin-1"):
+        try:
+            text = raw.decode(encoding)
+        except UnicodeDecodeError:
+            continue
+        return path.name if "\x00" in text else text
+    return path.name
 
 
 def _put_aside(store: Store, cases: list[Case], frame: Frame) -> str | None:

@@ -8,8 +8,10 @@ from pathlib import Path
 
 import pytest
 
+from rules.records import Refusal
 from service.errors import BadInput
 from service.intake import reportable, unreadable
+from service.intake.refusals import RowsRefused
 from service.store import reportables
 from service.store.base import Store, metadata
 from service.store.reportables import Case
@@ -142,6 +144,50 @@ def test_a_file_of_no_known_kind_is_searched_before_it_is_refused(store: Store, 
     assert [case.row for case in cases(store)] != []
     plain = write(tmp_path, "when,what\ntoday,mites\n", "mites.csv")
     assert str(unreadable(store, plain, BadInput("mites.csv fits no kind"), clock=CLOCK)) == "mites.csv fits no kind"
+
+
+@pytest.mark.parametrize("encoding", ["utf-8", "utf-8-sig", "utf-16", "latin-1"])
+def test_what_is_no_table_is_searched_in_whatever_encoding_it_is(store: Store, tmp_path: Path, encoding: str) -> None:
+    settle(store)
+    path = tmp_path / "sightings.csv"
+    path.write_bytes("when,what\ntoday,\u00e9lan weevil by the gate\n".encode(encoding))
+    told = str(unreadable(store, path, BadInput(f"{path.name} fits no kind"), clock=CLOCK))
+    assert told.startswith(FIRST)
+    assert [case.row for case in cases(store)] == [{"line": "today,\u00e9lan weevil by the gate"}]
+
+
+def test_a_photo_named_after_one_is_one_case(store: Store, tmp_path: Path) -> None:
+    settle(store)
+    path = tmp_path / "ghost beetle.jpg"
+    path.write_bytes(b"\xff\xd8\x00\x10" + bytes(range(256)) * 40)
+    told = str(unreadable(store, path, BadInput(f"{path.name}: what ends in .jpg"), clock=CLOCK))
+    assert told.startswith(FIRST)
+    assert "beetle" not in told
+    assert [case.row for case in cases(store)] == [{"line": "ghost beetle.jpg"}]
+
+
+def test_the_remedies_of_another_file_do_not_repeat_one(store: Store, tmp_path: Path) -> None:
+    settle(store)
+    path = write(tmp_path, "station,day\nghost beetle,2026-05-10\n", "days.csv")
+    refused = [
+        Refusal(2, "station", "ghost beetle", "write an id"),
+        Refusal(2, "crops", "x", "ghost beetle is no crop we know"),
+        Refusal(1, "ghost beetle", "", "there is no such column"),
+        Refusal(2, "rain", "y", "write a number"),
+    ]
+    error = unreadable(store, path, BadInput("1 to mend: 'ghost beetle'", refused), clock=CLOCK)
+    assert isinstance(error, BadInput)
+    assert [refusal.field for refusal in error.refusals] == ["rain"]
+    assert "beetle" not in str(error)
+    assert len(cases(store)) == 1
+
+
+def test_what_was_searched_already_and_a_list_itself_make_no_case(store: Store, tmp_path: Path) -> None:
+    settle(store)
+    names = write(tmp_path, 'names = ["ghost beetle"]\n', "district.toml")
+    for path, error in ((names, BadInput("line 1")), (tmp_path / "a.csv", RowsRefused("2 to mend"))):
+        assert unreadable(store, path, error, clock=CLOCK) is error
+    assert cases(store) == []
 
 
 def test_a_row_of_another_length_is_searched_too(store: Store, tmp_path: Path) -> None:
