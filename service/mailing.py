@@ -67,6 +67,15 @@ def expect_same(edition: Edition, now: dict[str, str]) -> None:
         raise WrongState(f"since edition {edition.id} was drafted, {', '.join(names)} changed; draft it again")
 
 
+def expect_sendable(store: Store, id: str, book: Book) -> None:
+    """WrongState where this version of the program would say a signed edition in other words than were signed."""
+    with store.reading() as c:
+        edition = editions.get(c, id)
+    if edition.state in ("signed", "sent") and (names := changed(edition, hashes(book))):
+        remedy = "nothing was sent; send it with the version of this program that signed it"
+        raise WrongState(f"since edition {id} was signed, {', '.join(names)} changed; {remedy}")
+
+
 def canonical_hash(rendered: Rendered) -> str:
     """The name of a digest's canonical form."""
     return digest(rendered)

@@ -6,10 +6,10 @@ The command line, the pages and the demo call these and nothing below them. Only
 """
 
 from collections.abc import Callable, Iterator, Sequence
-from contextlib import contextmanager
+from contextlib import closing, contextmanager
 from dataclasses import replace
 from datetime import datetime, timedelta
-from functools import cache
+from functools import cache, partial
 from pathlib import Path
 from typing import Any
 from urllib.parse import urlsplit
@@ -25,7 +25,7 @@ from service.clock import Clock, iso_week, local_day
 from service.delivery import smtp, worker
 from service.delivery.maildir_server import MaildirServer
 from service.editions.compose import Composed, compose
-from service.errors import Refused, WrongState
+from service.errors import BadInput, Refused, WrongState
 from service.intake.kinds import kind_of
 from service.intake.network_files import take_network
 from service.known import know
@@ -46,14 +46,12 @@ SIGNERS = frozenset({"coordinator", "deputy"})
 
 def init(file: Path) -> Outcome:
     """Write a commented settings file, the link keys and the empty store; an existing file is kept."""
-    if file.exists():
+    if not settings_file.write_new(file, settings_file.commented_file()):
         raise Refused(f"{file} is there already; edit it, or name another file")
-    file.parent.mkdir(parents=True, exist_ok=True)
-    file.write_text(settings_file.commented_file(), encoding="utf-8")
     settings = settings_file.read(file)
     settings_file.keys(settings)
-    open_store(settings).close()
-    return {"settings": str(file), "keys": settings.keys_file, "store": settings.store.url, "next": "leafturn doctor"}
+    with closing(open_store(settings)) as store:
+        return {"settings": str(file), "keys": settings.keys_file, "store": store.name, "next": "leafturn doctor"}
 
 
 def open_store(settings: Settings) -> Store:
@@ -79,24 +77,19 @@ def take(
     revise: bool = False,
 ) -> Outcome:
     """Take a file in, whatever it holds: all of it, or nothing and what to mend."""
-    with store.arrivals():
-        if (kind := kind_of(file)) == "observations":
-            counts = intake.take_observations(
-                store,
-                file,
-                clock=clock,
-                source=source,
-                district=district,
-                history=history,
-                keep_good=keep_good,
-                revise=revise,
-                progress=progress,
-            )
-        elif kind == "station_days":
-            counts = weather.take_station_days(store, file, clock=clock, history=history)
-        else:
-            counts = take_network(store, file, clock=clock)
-    return {"file": file.name, "kind": kind, **counts}
+    observed = partial(intake.take_observations, source=source, district=district, keep_good=keep_good, revise=revise)
+    try:
+        with store.arrivals():
+            if (kind := kind_of(file)) == "observations":
+                counts = observed(store, file, clock=clock, history=history, progress=progress)
+            elif kind == "station_days":
+                counts = weather.take_station_days(store, file, clock=clock, history=history)
+            else:
+                counts = take_network(store, file, clock=clock)
+    except BadInput as error:
+        raise intake.unreadable(store, file, error, clock=clock) from None
+    first = counts.pop("to_the_hotline", None)  # read before anything else; the file's name may be what it is about
+    return {"to_the_hotline": first, "file": "this file" if first else file.name, "kind": kind, **counts}
 
 
 # --- what the rules say -------------------------------------------------------------------------
@@ -213,14 +206,18 @@ def sign(
     canonical = mailing.render_all(signed, composed, book, known, readers, names, progress)
     rows = [mailing.outgoing(signed, reader, settings, now) for reader in readers]
     with store.writing() as c:
+        editions.expect_as_read(c, edition, held)
         editions.save_draft(c, signed, composed.statements.values(), composed.slips.values(), readers)
         outbox.forget_unsigned(c, id)
+        held = frozenset(editions.held(c, id))
     for start in range(0, len(readers), editions.PIECE):
         piece = slice(start, start + editions.PIECE)
         with store.writing() as c:
+            editions.expect_as_read(c, signed, held)
             editions.set_canonical(c, id, {each.id: canonical[each.id] for each in readers[piece]})
             outbox.enqueue(c, rows[piece], now)
     with store.writing() as c:
+        editions.expect_as_read(c, signed, held)
         editions.mark_signed(c, id, by=by, at=now)
         audit.add(c, who=by, at=now, what="sign", subject=id, why=note or "read and signed")
     return {"edition": id, "signed_by": signer.name, "slips": len(readers), "held": len(held)}
@@ -230,6 +227,7 @@ def send(
     store: Store, settings: Settings, id: str, *, clock: Clock, by: str = "leafturn", progress: Progress = None
 ) -> Outcome:
     """Let a signed edition go and deliver what is due; run again, it delivers what is left."""
+    mailing.expect_sendable(store, id, book_of(store, id))
     with store.writing() as c:
         edition = editions.get(c, id)
         if edition.state != "sent":
@@ -246,17 +244,7 @@ def send(
 
     counts = worker.deliver(store, sender, mailer, clock, settings, moved)
     with store.reading() as c:
-        left = outbox.counts(c, id)
-    return {"edition": id, **counts, "still_to_send": left["queued"] + left["deferred"], **_unsure(left)}
-
-
-def _unsure(left: dict[str, int]) -> Outcome:
-    """What to say of messages that an earlier sending held when it was stopped."""
-    count = left["leased"] + left["sending"]
-    if not count:
-        return {}
-    words = "held by a sending that is under way or was cut off; send again in a quarter of an hour to take them up"
-    return {"held_elsewhere": f"{count} {words}"}
+        return {"edition": id, **counts, **showing.left_to_send(outbox.counts(c, id))}
 
 
 @contextmanager

@@ -1,6 +1,7 @@
 """What the coordinator is shown: signals in a line, an edition's statements in words, and what the gate marks."""
 
 from collections import Counter
+from collections.abc import Mapping
 from datetime import date, datetime
 from typing import Any
 
@@ -29,6 +30,15 @@ def signal_line(signal: Signal) -> Outcome:
         "rows": len(signal.evidence),
         "figures": dict(signal.figures),
     }
+
+
+def left_to_send(left: Mapping[str, int]) -> Outcome:
+    """How many of an edition's messages wait, and what to say of those that another sending holds."""
+    waiting = {"still_to_send": left["queued"] + left["deferred"]}
+    if not (count := left["leased"] + left["sending"]):
+        return waiting
+    words = "held by a sending that is under way or was cut off; send again in a quarter of an hour to take them up"
+    return {**waiting, "held_elsewhere": f"{count} {words}"}
 
 
 def names_now(store: Store, district: str, now: datetime) -> frozenset[str]:

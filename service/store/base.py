@@ -80,6 +80,11 @@ class Store:
     def is_sqlite(self) -> bool:
         return self.engine.dialect.name == "sqlite"
 
+    @property
+    def name(self) -> str:
+        """Its URL without a password."""
+        return self.engine.url.render_as_string(hide_password=True)
+
     @contextmanager
     def reading(self) -> Iterator[Connection]:
         """One consistent view of the store."""

@@ -5,7 +5,7 @@ belong to one edition. An edition that is signed no longer changes, except that 
 """
 
 import json
-from collections.abc import Iterable, Iterator, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence, Set
 from datetime import date, datetime
 from itertools import islice
 from typing import Any, NamedTuple
@@ -275,6 +275,13 @@ def release(c: Connection, id: str, name: str | None = None) -> None:
     change = {"held_reason": None, "held_by": None, "held_at": None}
     if not c.execute(update(edition_statement).where(same).values(change)).rowcount:
         raise NotFound(f"edition {id} holds no statement {name!r}")
+
+
+def expect_as_read(c: Connection, record: Edition, holds: Set[str]) -> None:
+    """Lock an edition; WrongState unless it and its holds are still what somebody read who now signs it."""
+    c.execute(select(edition.c.id).where(edition.c.id == record.id).with_for_update())
+    if find(c, record.id) != record or held(c, record.id).keys() != holds:
+        raise WrongState(f"edition {record.id} was changed by someone else meanwhile; look at it again")
 
 
 def set_canonical(c: Connection, id: str, hashes: Mapping[str, str]) -> None:
