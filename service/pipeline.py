@@ -294,8 +294,8 @@ class Pages:
     def unsubscribe(self, token: str, at: datetime) -> None:
         reader = self._tokens.read("unsubscribe", token, at)
         with self._store.writing() as c:
-            if network.set_subscriber_state(c, reader, "left"):
-                audit.add(c, who=reader, at=at, what="unsubscribe", subject=reader, why="their own link")
+            for id in network.leave(c, reader):
+                audit.add(c, who=reader, at=at, what="unsubscribe", subject=id, why="their own link")
 
 
 # --- for the doctor -----------------------------------------------------------------------------

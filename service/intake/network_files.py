@@ -83,8 +83,10 @@ def _check_and_save(
 
 
 def _keep_state(record: Any, before: Any) -> Any:
-    """A list of readers never brings back one who paused or left."""
-    return replace(record, state=before.state) if isinstance(record, Subscriber) and before else record
+    """A list of readers never brings back one who paused or left, nor lets an address that left be forgotten."""
+    if not isinstance(record, Subscriber) or not before:
+        return record
+    return replace(record, state=before.state, email=before.email if before.state == "left" else record.email)
 
 
 def _take_districts(store: Store, path: Path, now: datetime) -> dict[str, int]:

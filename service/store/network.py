@@ -204,6 +204,13 @@ def set_subscriber_state(c: Connection, id: str, state: str) -> bool:
     return bool(c.execute(changed).rowcount)
 
 
+def leave(c: Connection, id: str) -> list[str]:
+    """Stop all mail to a reader's address, under whatever ids it is known; returns those that got mail before."""
+    address = select(func.lower(subscriber.c.email)).where(subscriber.c.id == id).scalar_subquery()
+    theirs = select(subscriber.c.id).where(func.lower(subscriber.c.email) == address).order_by(subscriber.c.id)
+    return [each for each in c.scalars(theirs).all() if set_subscriber_state(c, each, "left")]
+
+
 # --- reading -----------------------------------------------------------------------------------
 
 

@@ -13,16 +13,17 @@ from sqlalchemy import text, update
 
 from rules.records import Observation, Paddock, Reportable, StationDay
 from service import mailing, pipeline
+from service import settings as settings_file
 from service.clock import SetClock
 from service.errors import BadInput, NotFound, Refused, UnsafeText, WrongState
 from service.settings import MailSettings, Settings, WebSettings
-from service.store import editions, jobs, network, observations, outbox, reportables
+from service.store import audit, editions, jobs, network, observations, outbox, reportables
 from service.store import weather as weather_store
 from service.store.base import Store
 from service.tokens import Tokens
 from service.web.app import make_app
 from tests import small_network
-from tests.builders import FOUNDED, a_district
+from tests.builders import FOUNDED, a_district, a_subscriber
 from tests.service.web.site import running
 
 ID = "north-2026-W20"
@@ -98,6 +99,20 @@ def test_every_link_of_every_mail_opens(full: Store, settings: Settings, clock: 
                 assert answer.status == 200
         with full.reading() as c:
             assert len(network.subscribers(c, "north")) == READERS - 1
+
+
+def test_the_way_out_stops_all_mail_to_the_address_and_to_no_other(
+    full: Store, settings: Settings, clock: SetClock
+) -> None:
+    """The page says that no more digests come to this address; it may be known under several ids."""
+    with full.writing() as c:
+        network.save_subscribers(c, [a_subscriber("t3", email="S3@Example.org"), a_subscriber("t4", email="s3@e.org")])
+    token = Tokens(settings_file.keys(settings)).make("unsubscribe", "s3", clock.now())
+    for _ in range(2):
+        pipeline.Pages(full, settings).unsubscribe(token, clock.now())
+    with full.reading() as c:
+        assert {each.id for each in network.subscribers(c, "north", "left")} == {"s3", "t3"}
+        assert [each.subject for each in audit.entries(c, what="unsubscribe")] == ["s3", "t3"]
 
 
 def test_who_left_after_signing_gets_no_mail(full: Store, settings: Settings, clock: SetClock, tmp_path: Path) -> None:

@@ -384,6 +384,8 @@ def test_an_address_that_left_does_not_come_back_under_another_id(desk: Desk) ->
         network.set_subscriber_state(c, "s2", "left")
     again = SUBSCRIBER_COLUMNS + "s3,north,ANN@example.org,Ann,9001,,,,en,bought list,\n"
     one(desk, again, "email", "only its owner can come back")
+    desk.take(SUBSCRIBERS.replace("ann@example.org", "anne@example.org"))  # a new address does not free the old one
+    one(desk, again, "email", "only its owner can come back")
 
 
 # --- size ------------------------------------------------------------------------------------------
