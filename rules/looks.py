@@ -10,6 +10,11 @@ from rules.records import Effort, Look, Observation, Why
 PROMPTS_MOST = (Why.DAMAGE, Why.ASKED, Why.FIELD_DAY, Why.LOT, Why.ROUTINE, Why.UNKNOWN)
 
 
+def is_trap_reading(row: Observation) -> bool:
+    """Whether a row reads a trap: moths that flew in from afar, not a visit that looked for the pest in a paddock."""
+    return row.trap is not None or row.unit == "per_trap_night"
+
+
 def derive(
     observations: Sequence[Observation], spots_planned: Mapping[str, int], uninformative: Collection[str] = frozenset()
 ) -> list[Look]:
@@ -18,7 +23,7 @@ def derive(
     Parameters
     ----------
     observations : sequence of Observation
-        One version of each row, in any order.
+        One version of each row, in any order. Readings of traps are no looks and are left out.
     spots_planned : mapping of pest to int
         Spots that a complete look takes.
     uninformative : collection of str, default empty
@@ -38,6 +43,8 @@ def derive(
     """
     visits: dict[tuple[object, ...], list[Observation]] = defaultdict(list)
     for row in observations:
+        if is_trap_reading(row):
+            continue
         where = row.paddock or f"cell {row.place.cell}"
         visits[row.day, row.pest, row.district, row.paddock is None, where, row.reporter].append(row)
     return [_look(rows, spots_planned, uninformative) for _, rows in sorted(visits.items(), key=lambda item: item[0])]

@@ -114,3 +114,9 @@ def test_order_of_rows_changes_nothing():
     assert [look.day for look in first] == sorted(look.day for look in first)
     for shuffled in itertools.permutations(rows):
         assert derive(shuffled, PLAN) == first
+
+
+def test_a_trap_reading_is_no_look():
+    rows = [an_observation("csv:1", trap="t1", nights=7), an_observation("csv:2", unit="per_trap_night")]
+    assert derive(rows, PLAN) == []
+    assert len(derive([*rows, an_observation("csv:3")], PLAN)) == 1

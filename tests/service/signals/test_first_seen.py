@@ -141,7 +141,7 @@ def test_a_later_find_is_no_first() -> None:
     assert signals([a_row("a", TODAY - 30 * DAY, found=True), a_row("b", TODAY, found=True)]) == []
 
 
-@pytest.mark.parametrize("change", [{"present": False}, {"confidence": "unsure"}, {"pest": "cutworms"}])
+@pytest.mark.parametrize("change", [{"present": False}, {"confidence": "unsure"}, {"pest": "cutworms"}, {"trap": "t1"}])
 def test_what_is_no_find(change: dict[str, Any]) -> None:
     assert signals([a_row("a", TODAY, found=True, **change)]) == []
 
