@@ -25,7 +25,6 @@ from service.store.outbox import Outgoing, message_id
 from service.tokens import Tokens
 
 Progress = Callable[[int, int | None, str], None] | None
-WARM_MONTHS = frozenset({10, 11, 12, 1, 2, 3})  # of the south; six months later in the north
 
 
 # --- what an edition freezes --------------------------------------------------------------------
@@ -33,13 +32,12 @@ WARM_MONTHS = frozenset({10, 11, 12, 1, 2, 3})  # of the south; six months later
 
 def head(edition: str, known: Known, signed_by: str = "", note: str = "") -> Head:
     """What every digest of an edition shares, as it is when it is drafted or signed."""
-    month = known.today.month if known.district.latitude < 0 else (known.today.month + 5) % 12 + 1
     return Head(
         edition=edition,
         district=known.district.name,
         day=known.today,
         holdings_to_hide=known.district.holdings_to_hide,
-        warm_half=month in WARM_MONTHS,
+        warm_half=wording.warm_half(known.today, known.district.latitude),
         signed_by=signed_by,
         note=note,
         attributions=tuple(sorted({each.attribution for each in known.stations.values() if each.attribution})),

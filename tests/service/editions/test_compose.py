@@ -165,6 +165,16 @@ def test_a_look_without_a_find_quiets_the_ask_for_its_re_look_interval() -> None
     assert cast.slip([cast.look(0, False, ago=7)], [cast.hatch()], paddocks=fields).asks
 
 
+def test_the_re_look_interval_is_the_pests_own_and_never_more_than_a_week() -> None:
+    mite = cast.BOOK.pests[MITE]
+    for days, ago, quiet in ((3, 2, True), (3, 3, False), (30, 6, True), (30, 7, False)):
+        entry = replace(mite, relook_days=replace(mite.relook_days, value=days))
+        book = replace(cast.BOOK, pests=cast.BOOK.pests | {MITE: entry})
+        known = cast.district([cast.look(0, False, ago=ago)], paddocks=cast.fields(p0=SOWN))
+        asks = compose(known, [cast.hatch()], book, [cast.reader()]).slips["s1"].asks
+        assert bool(asks) != quiet, (days, ago)
+
+
 def test_only_that_pest_is_quieted() -> None:
     row = cast.look(0, False, ago=1, pest=FLEA)
     assert cast.slip([row], [cast.hatch()], paddocks=cast.fields(p0=SOWN)).asks
@@ -229,6 +239,8 @@ def test_most_finds_from_one_person_are_said_to_be() -> None:
     assert one.figures == {"days": 14, "finds": 6, "by_one": 4}
     assert one.hash in composed.slips["s1"].around[0].statements
     assert "one_reporter" not in wordings(cast.edition([*finds, cast.look(7, True)]))  # 4 of 7 = 57 %
+    three_of_five = [*finds[:3], cast.look(5, True), cast.look(6, True)]  # 60 %, which is not more than 60 %
+    assert "one_reporter" not in wordings(cast.edition(three_of_five))
     assert "one_reporter" not in wordings(cast.edition(finds[:4]))  # four finds are too few
 
 

@@ -260,6 +260,16 @@ def test_dressed_seed_still_needs_a_look() -> None:
     assert "delay feeding" not in text(cast.hatch())
 
 
+def test_a_dressing_is_spoken_of_while_the_crop_is_small() -> None:
+    """Cutworms matter to wheat up to stage 21; by then a dressing of the seed hides nothing."""
+    row = cast.look(1, True, pest=CUTWORM)
+    wheat = cast.fields(p0=goldens.SOWN | {"crop": "wheat", "seed_dressing": True})
+    for stage, early in ((19, True), (20, False)):
+        own = cast.look(0, True, ago=1, crop="wheat", stage=stage)
+        shown = cast.said(cast.edition([row, own], [cast.first_seen(row)], paddocks=wheat))
+        assert any("delay feeding" in each.text for each in shown.cards[0].what) == early
+
+
 def test_a_night_look_says_to_tell_someone() -> None:
     row = cast.look(1, True, pest=CUTWORM)
     shown = cast.said(cast.edition([row], [cast.first_seen(row)]))

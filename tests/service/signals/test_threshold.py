@@ -160,7 +160,8 @@ def test_the_row_spacing_may_be_the_paddocks() -> None:
         ("eight days old", a_count(day=TODAY - 8 * DAY)),
         ("no number at two true leaves", a_count(stage=12)),
         ("outside the stages it matters at", a_count(stage=30)),
-        ("numbers from memory only", a_count(crop="wheat", unit="per_100cm2")),
+        # the catalogue has 50 in 100 cm2 of wheat, from memory; these are 70 on average
+        ("numbers from memory only", a_count(spots=[5 * n for n in MANY], crop="wheat", unit="per_100cm2")),
         ("holes in leaves are not mites", a_count(unit="holes_per_leaf")),
         ("no row spacing to convert by", worms()),
         ("stage unknown", a_count(stage=None)),
