@@ -1,7 +1,7 @@
 """`leafturn …`: reads the words of a command, calls the pipeline, shows what came of it.
 
-Exit codes: 0 done, 1 refused input, 2 usage, 3 a service it needs did not answer. `--json` prints one JSON
-object instead of words.
+Exit codes: 0 done, 1 refused input, 2 usage, 3 a service it needs did not answer, 130 stopped by a person.
+`--json` prints one JSON object instead of words.
 """
 
 import json
@@ -21,9 +21,11 @@ from rules.digests import plain
 from service import __version__, doctor, pipeline
 from service import settings as settings_file
 from service.clock import SystemClock
-from service.errors import BadInput, LeafturnError, UnsafeText
+from service.errors import BadInput, LeafturnError, Unreachable, UnsafeText
 
 COORDINATOR, OFFICER, OPERATOR = "For the coordinator", "For field officers and imports", "For the operator"
+
+STOPPED = 130  # what a shell says of a command that was interrupted
 
 app = typer.Typer(
     name="leafturn",
@@ -231,6 +233,20 @@ def _answering(as_json: bool) -> Any:
     except LeafturnError as error:
         _explain(error, as_json)
         raise typer.Exit(error.exit_code) from error
+    except BrokenPipeError:
+        raise  # whoever read along has gone
+    except OSError as error:
+        _explain(_of_the_machine(error), as_json)
+        raise typer.Exit(Unreachable.exit_code) from error
+    except KeyboardInterrupt:
+        typer.echo("leafturn: stopped; nothing is half-kept. Run it again to go on", err=True)
+        raise typer.Exit(STOPPED) from None
+
+
+def _of_the_machine(error: OSError) -> Unreachable:
+    """What the machine refused: a full disk, a folder that is not ours."""
+    where = f"{error.filename}: " if error.filename else ""
+    return Unreachable(f"{where}{error.strerror or error}. Mend that and run it again")
 
 
 @contextmanager
@@ -265,9 +281,10 @@ def _explain(error: LeafturnError, as_json: bool) -> None:
         body = {"error": str(error), "refused": refusals, "marks": marks, "try_again": not error.permanent}
         typer.echo(json.dumps(plain(body), ensure_ascii=False, indent=2))
         return
-    typer.echo(f"leafturn: {error}", err=True)
+    typer.echo(f"leafturn: {_shown(str(error))}", err=True)
     for refusal in refusals[:50]:
-        typer.echo(f"  row {refusal.row}, {refusal.field} = {refusal.value!r}: {refusal.remedy}", err=True)
+        line = f"row {refusal.row}, {refusal.field} = {refusal.value!r}: {refusal.remedy}"
+        typer.echo(f"  {_shown(line)}", err=True)
     if len(refusals) > 50:
         typer.echo(f"  … and {len(refusals) - 50} more; --json lists them all", err=True)
     for where, word, reason in marks:
@@ -279,7 +296,7 @@ def _in_words(outcome: Outcome) -> None:
     for name, value in outcome.items():
         label = name.replace("_", " ")
         if isinstance(value, str) and "\n" in value:
-            typer.echo(value)
+            typer.echo(_shown(value))
         elif isinstance(value, Mapping):
             typer.echo(f"{label}:")
             for inner, amount in value.items():
@@ -289,11 +306,16 @@ def _in_words(outcome: Outcome) -> None:
             for item in value:
                 typer.echo(f"  {_one_line(item)}")
         elif value is not None and value != "":
-            typer.echo(f"{label}: {value}")
+            typer.echo(_shown(f"{label}: {value}"))
+
+
+def _shown(text: str) -> str:
+    """A text with what would steer a terminal written out: files and servers say things too."""
+    return "".join(sign if sign.isprintable() or sign == "\n" else ascii(sign)[1:-1] for sign in text)
 
 
 def _one_line(item: Any) -> str:
     if isinstance(item, Mapping):
         shown = [f"{value}" if name in ("says", "text") else f"{name} {value}" for name, value in item.items()]
-        return " · ".join(shown)
-    return str(item)
+        return _shown(" · ".join(shown))
+    return _shown(str(item))

@@ -8,8 +8,6 @@ from pathlib import Path
 from typing import Any
 from zoneinfo import available_timezones
 
-from sqlalchemy import make_url
-
 from service import pipeline
 from service import settings as settings_file
 from service.clock import Clock
@@ -28,11 +26,21 @@ def examine(config: Path | None, clock: Clock) -> list[Finding]:
         settings_file.keys(settings)
     except LeafturnError as error:
         return [_finding("settings", False, str(error))]
+    if open_files := [str(file) for file in _secrets(settings, config) if file.stat().st_mode & 0o077]:
+        words = f"others on this machine can read what is secret; run: chmod 600 {' '.join(open_files)}"
+        return [_finding("settings", False, words), *_the_rest(settings, clock)]
     where = config or Path(settings_file.FILE_NAME)
     said = (
         f"{where} is read" if where.exists() else "no settings file here; defaults are used (leafturn init makes one)"
     )
     return [_finding("settings", True, said), *_the_rest(settings, clock)]
+
+
+def _secrets(settings: Settings, config: Path | None) -> list[Path]:
+    """The files that hold keys, passwords, or people's names and addresses."""
+    with_password = settings.mail.password_file or (config or settings_file.FILE_NAME if settings.mail.password else "")
+    named = (settings.keys_file, with_password, pipeline.store_file(settings))
+    return [Path(name) for name in named if name and Path(name).is_file()]
 
 
 def _the_rest(settings: Settings, clock: Clock) -> Iterator[Finding]:
@@ -69,10 +77,8 @@ def _clock(clock: Clock, newest: datetime | None) -> Finding:
 
 
 def _disk(settings: Settings) -> Finding:
-    folder = Path(settings.data_dir)
-    url = make_url(settings.store.url)
-    if url.get_backend_name() == "sqlite" and url.database:
-        folder = Path(url.database).parent
+    file = pipeline.store_file(settings)
+    folder = file.parent if file else Path(settings.data_dir)
     while not folder.exists():
         folder = folder.absolute().parent
     free = shutil.disk_usage(folder).free / 1e9

@@ -32,7 +32,7 @@ from service.known import know
 from service.settings import Settings
 from service.store import audit, editions, health, jobs, network, outbox, rules, schema
 from service.store import signals as signal_store
-from service.store.base import Store
+from service.store.base import Store, file_of
 from service.tokens import Tokens
 
 Outcome = dict[str, Any]
@@ -59,6 +59,11 @@ def open_store(settings: Settings) -> Store:
     store = Store.open(settings.store.url, settings.store.busy_s)
     schema.upgrade(store)
     return store
+
+
+def store_file(settings: Settings) -> Path | None:
+    """The file that the store is, if it is one."""
+    return file_of(settings.store.url)
 
 
 # --- in -----------------------------------------------------------------------------------------

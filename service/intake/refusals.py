@@ -43,7 +43,7 @@ def keep(path: Path, header: Sequence[str], refused: Mapping[int, Sequence[str]]
         writer.writerow([_harmless(cell) for cell in refused[number]])
     at = {number: place for place, number in enumerate(sorted(refused), start=2)}
     reasons = [{"row_here": at[refusal.row]} | asdict(refusal) for refusal in refusals]
-    if path.exists() and path.read_text(encoding="utf-8") != out.getvalue():
+    if path.exists() and path.read_bytes() != out.getvalue().encode():
         raise BadInput(f"{path} is there already, and was perhaps mended; take it, move it away, or name another")
     _write(path, out.getvalue())
     _write(reasons_path(path), json.dumps(reasons, ensure_ascii=False, indent=1) + "\n")

@@ -139,6 +139,16 @@ def parsed_url(url: str) -> URL:
     raise StoreDown("store.url is no URL of a store; write sqlite:///path, or postgresql://user@host/name")
 
 
+def file_of(url: str) -> Path | None:
+    """The file that a URL of SQLite means; None for any other."""
+    try:
+        parsed = parsed_url(url)
+    except StoreDown:
+        return None
+    in_a_file = parsed.get_backend_name() == "sqlite" and parsed.database not in (None, "", ":memory:")
+    return Path(str(parsed.database)) if in_a_file else None
+
+
 def _sqlite(url: URL, busy_s: int) -> Engine:
     _make_private(url.database)
     engine = create_engine(url, connect_args={"timeout": busy_s}, hide_parameters=True)

@@ -1,9 +1,11 @@
 """The installed command, as a person runs it: what it prints, and the four exit codes."""
 
 import json
+import signal
 import subprocess
 import sys
 from pathlib import Path
+from select import select
 
 import pytest
 
@@ -112,3 +114,59 @@ def test_the_rules_run_and_draft_on_what_there_is(home: Path) -> None:
     missing = leafturn(home, "edition", "show", "north-1999-W01")
     assert missing.returncode == 1
     assert "there is no edition" in missing.stderr
+
+
+# --- when things go wrong ----------------------------------------------------------------------------
+
+
+def test_the_doctor_finds_secrets_that_others_can_read(home: Path) -> None:
+    (home / "var" / "keys").chmod(0o644)
+    done = leafturn(home, "doctor", "--json")
+    (home / "var" / "keys").chmod(0o600)
+    settings = json.loads(done.stdout)["findings"][0]
+    assert not settings["well"]
+    assert "chmod 600 var/keys" in settings["text"]
+    assert json.loads(leafturn(home, "doctor", "--json").stdout)["findings"][0]["well"]
+
+
+def test_the_doctor_outlives_a_store_that_has_no_url(home: Path) -> None:
+    (home / "odd.toml").write_text('[store]\nurl = "ada:hush"\n', encoding="utf-8")
+    done = leafturn(home, "doctor", "--settings", "odd.toml", "--json")
+    findings = {each["what"]: each["well"] for each in json.loads(done.stdout)["findings"]}
+    assert (findings["store"], findings["disk"]) == (False, True)
+    assert "hush" not in done.stdout + done.stderr
+
+
+def test_what_the_machine_refuses_is_said_and_nothing_is_taken(home: Path) -> None:
+    good, bad = LOOKS.format(status="absent").replace("a1,", "k1,"), "k2,2026-05-10,9001,lucerne_flea,perhaps,ivy\n"
+    (home / "mixed.csv").write_text(good + bad, encoding="utf-8")
+    for target in (".", "nowhere/rest.csv"):
+        done = leafturn(home, "take", "mixed.csv", "--keep-good", target)
+        assert done.returncode == 3
+        assert "Traceback" not in done.stderr
+        assert "Mend that and run it again" in done.stderr
+    over = leafturn(home, "take", "mixed.csv", "--keep-good", "var/leafturn.db")
+    assert (over.returncode, "is there already" in over.stderr) == (1, True)
+    assert json.loads(leafturn(home, "take", "mixed.csv", "--keep-good", "rest.csv", "--json").stdout)["new"] == 1
+
+
+def test_a_file_can_not_steer_the_terminal(home: Path) -> None:
+    (home / "steer.csv").write_text("d\x1b]0;owned\x07y,day,pest,status,reporter,paddock\n", encoding="utf-8")
+    done = leafturn(home, "take", "steer.csv")
+    assert done.returncode == 1
+    assert "\\x1b]0;owned" in done.stderr
+    assert "\x1b" not in done.stderr
+
+
+def test_a_person_can_stop_a_command(home: Path) -> None:
+    rows = "".join(f"s{n},2026-05-10,9001,lucerne_flea,absent,ivy\n" for n in range(200_000))
+    (home / "long.csv").write_text(LOOKS.split("\n")[0] + "\n" + rows, encoding="utf-8")
+    with subprocess.Popen([LEAFTURN, "take", "long.csv"], cwd=home, stderr=subprocess.PIPE, text=True) as command:
+        while not (home / "var" / "leafturn.db-wal").exists():  # it has opened the store
+            assert command.poll() is None
+            select([], [], [], 0.02)
+        command.send_signal(signal.SIGINT)
+        _, said = command.communicate(timeout=60)
+    assert command.returncode == 130
+    assert said == "leafturn: stopped; nothing is half-kept. Run it again to go on\n"
+    assert json.loads(leafturn(home, "doctor", "--json").stdout)["findings"][1]["well"]
