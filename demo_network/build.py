@@ -9,7 +9,7 @@ from collections import defaultdict
 from collections.abc import Iterable
 from pathlib import Path
 
-from demo_network import directory, farming, observations, paddocks, room, traps, weather
+from demo_network import directory, farming, notifiable, observations, paddocks, room, traps, weather
 from demo_network.event import Event
 from demo_network.farming import World
 from demo_network.files import Row, write
@@ -57,7 +57,8 @@ def _paddocks(folder: Path, world: World) -> None:
 
 def _observations(world: World, events: Iterable[Event]) -> list[Row]:
     """Ordinary and planted rows; where a planted one has an ordinary one's id, it stands in its place."""
-    found = {row["record_id"]: row for row in observations.rows(world) + traps.rows(world)}
+    ordinary = [*observations.rows(world), *traps.rows(world), notifiable.row(world)]
+    found = {row["record_id"]: row for row in ordinary}
     for event in events:
         found |= {row["record_id"]: row for row in (event.rows(event, world) if event.rows else ())}
     return sorted(found.values(), key=lambda row: (row["arrived_at"], row["record_id"]))

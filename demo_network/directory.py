@@ -9,7 +9,7 @@ from demo_network.network import COORDINATORS, DISTRICTS, District, Person, Spot
 from demo_network.readers import CONSENT, Reader
 
 ATTRIBUTION = "invented weather of the demo network"
-# two of each district's notifiable pests; the demo's hotlines are invented, and no row of the demo matches
+# two of each district's notifiable pests; the demo's hotlines are invented, and one row of the demo matches
 REPORTABLES = (
     ("khapra_beetle", ("khapra beetle", "Trogoderma granarium", "TROGGA"), "2024-01-15"),
     ("karnal_bunt", ("Karnal bunt", "Tilletia indica", "NEOVIN"), "2024-01-15"),

@@ -3,14 +3,19 @@
 import json
 import re
 from collections.abc import Callable
+from contextlib import closing
 from pathlib import Path
 from typing import Any
 
 import pytest
 from rich.console import Console
 
-from demo_network import walk
+from demo_network import notifiable, walk
+from demo_network.directory import REPORTABLES
 from demo_network.planted import EVENTS
+from service import pipeline, settings
+from service.clock import SystemClock
+from service.store import observations, reportables
 
 FOUND = {"hatch", "border", "first_find"}
 FLAGGED = {"busy_looking", "one_reporter"}
@@ -61,6 +66,28 @@ def test_the_page_leads_to_a_dozen_digests_as_page_and_text(walked: Path) -> Non
     for event in EVENTS:
         assert f"<code>{event.name}</code>" in page
     assert "$" not in page
+
+
+@pytest.mark.slow
+def test_a_notifiable_find_is_seen_nowhere_but_in_closed_hands(walked: Path) -> None:
+    listed = re.compile("|".join(name for _, names, _ in REPORTABLES for name in names), re.IGNORECASE)
+    left = [file for file in walked.rglob("*") if file.is_file() and "files" not in file.relative_to(walked).parts]
+    for file in left:
+        if "store" not in file.relative_to(walked).parts:
+            assert not listed.search(file.read_bytes().decode("utf-8", "replace")), file
+    with closing(pipeline.open_store(settings.read(walked / "leafturn.toml"))) as store, store.reading() as c:
+        assert len(reportables.cases(c, notifiable.DISTRICT)) == 1
+        rows = observations.read(c, notifiable.DISTRICT, SystemClock().now())
+    assert not [row for row in rows if listed.search(repr(row))]
+
+
+@pytest.mark.slow
+def test_one_digest_is_kept_whole(walked: Path) -> None:
+    """The digest of the counted paddock's owner, as it was delivered, but for its links."""
+    golden = Path(__file__).parents[2] / "demo_network/golden_digest.txt"
+    (kept,) = walked.glob("slips/*-2026-W20-lantern.txt")
+    said = re.sub(r"http://\S+", "(link)", kept.read_text(encoding="utf-8"))
+    assert said == golden.read_text(encoding="utf-8")
 
 
 @pytest.mark.slow
