@@ -79,10 +79,10 @@ def of_looks(finds: int, looks: int) -> str:
 
 
 def yours(own: int, looks: int) -> str:
-    """How many of some looks are the reader's own, to stand behind them: *, 2 of them yours*."""
+    """How many of some looks are the reader's own, to stand behind a count: *, 2 looks yours*."""
     if not own:
         return ""
-    return ", your own" if own == looks else f", {own:,} of them yours"
+    return ", your own" if own == looks else f", {how_many(own, 'look')} yours"
 
 
 def listed(words: Sequence[str], joint: str = "and") -> str:

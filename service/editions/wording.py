@@ -141,9 +141,9 @@ def _silence(slip: Slip, head: Head) -> list[Sentence]:
             "Nobody looked for your crops' pests within 20 km in the last 14 days, so this says nothing of them there."
         )
         return [Sentence(text, "reader:looks")]
-    were = "was" if looks == 1 else "were"
-    made = f"in the last 14 days, {say.how_many(looks, 'look')}{say.yours(slip.own['yours'], looks)}"
-    made += f"{',' if slip.own['yours'] else ''} {were} made within 20 km"
+    yours = say.yours(slip.own["yours"], looks).removeprefix(", ")
+    made = f"in the last 14 days, {say.how_many(looks, 'look')}{f' ({yours})' if yours else ''} "
+    made += f"{'was' if looks == 1 else 'were'} made within 20 km"
     if not slip.own["finds"] and not slip.own.get("kept"):
         text = f"Nothing was reported near you: {made}. That does not rule pests out."
     else:

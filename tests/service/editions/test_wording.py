@@ -232,8 +232,8 @@ def test_looks_for_a_pest_of_other_crops_are_no_looks_for_the_readers() -> None:
 def test_the_readers_own_looks_are_called_theirs() -> None:
     rows = [cast.look(0, False, ago=9), cast.look(1, False), cast.look(2, False, pest=FLEA)]
     said = text(rows=rows)
-    assert "found in 0 of 2 looks within 20 km in the last 14 days, 1 of them yours." in said
-    assert "in the last 14 days, 3 looks, 1 of them yours, were made within 20 km." in said
+    assert "found in 0 of 2 looks within 20 km in the last 14 days, 1 look yours." in said
+    assert "in the last 14 days, 3 looks (1 look yours) were made within 20 km." in said
     assert "Lucerne fleas: not found in the one look within 20 km in the last 14 days." in said
     alone = text(cast.hatch(), rows=rows[:1])
     assert "Not found in the one look within 20 km, your own." in alone
