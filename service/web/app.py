@@ -18,7 +18,7 @@ from starlette.exceptions import HTTPException as PlainHTTPException
 from service.clock import Clock, SystemClock
 from service.errors import BadToken, LeafturnError, NotFound, Unreachable
 from service.web import pages
-from service.web.limits import Limits
+from service.web.limits import Limits, Patient
 
 LARGEST_BODY = 4096  # bytes; the one form there is sends 30
 PATIENCE_S = 10.0
@@ -97,6 +97,7 @@ def serving(app: FastAPI, host: str, port: int) -> uvicorn.Config:
         host=host,
         port=port,
         log_level="info",
+        http=Patient,
         server_header=False,
         limit_concurrency=200,
         timeout_keep_alive=5,

@@ -4,11 +4,42 @@ import asyncio
 from collections.abc import Awaitable, Callable, MutableMapping
 from typing import Any
 
+from uvicorn.protocols.http.h11_impl import H11Protocol
+
 Message = MutableMapping[str, Any]
 Receive = Callable[[], Awaitable[Message]]
 Send = Callable[[Message], Awaitable[None]]
 App = Callable[[MutableMapping[str, Any], Receive, Send], Awaitable[None]]
 Refuse = Callable[[int], tuple[list[tuple[bytes, bytes]], bytes]]  # headers and body of a refusal
+
+
+class Patient(H11Protocol):
+    """HTTP whose connections are closed where no request comes: uvicorn by itself waits for ever for a first one.
+
+    Two hundred idle connections would else keep everyone from the way out.
+    """
+
+    patience_s = 10.0  # for a request's head; a connection between two requests may stay for twice that
+
+    def connection_made(self, transport: asyncio.Transport) -> None:  # type: ignore[override]
+        super().connection_made(transport)
+        self._last: object = None
+        self._look_later()
+
+    def connection_lost(self, exc: Exception | None) -> None:
+        self._timer.cancel()
+        super().connection_lost(exc)
+
+    def _look_later(self) -> None:
+        self._timer = self.loop.call_later(self.patience_s, self._look)
+
+    def _look(self) -> None:
+        waiting = self.cycle is None or self.cycle.response_complete
+        if waiting and self.cycle is self._last:
+            self.transport.close()
+            return
+        self._last = self.cycle
+        self._look_later()
 
 
 class Limits:

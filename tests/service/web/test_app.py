@@ -17,6 +17,7 @@ from service.errors import StoreBusy
 from service.store.base import Store
 from service.web import pages
 from service.web.app import LARGEST_BODY, Access, Service, make_app
+from service.web.limits import Patient
 from tests.builders import NOW
 from tests.service.editions.views import a_view
 from tests.service.web.site import Site, a_site, running
@@ -247,6 +248,15 @@ def test_a_body_that_dawdles_is_given_up(store: Store) -> None:
         answer = conversation(site, head)
         assert answer.startswith(b"HTTP/1.1 408 ")
         assert site.readers.state() == "confirmed"
+
+
+@pytest.mark.parametrize("head", [b"", b"GET /healthz HTTP/1.1\r\nHost: x\r\nSlow: "], ids=["nothing", "half a head"])
+def test_a_connection_without_a_request_is_closed(site: Site, monkeypatch: pytest.MonkeyPatch, head: bytes) -> None:
+    """Idle connections must not use up the places of those who want the way out."""
+    monkeypatch.setattr(Patient, "patience_s", 0.2)
+    assert conversation(site, head) == b""
+    whole = b"GET /healthz HTTP/1.1\r\nHost: x\r\n\r\n"
+    assert conversation(site, whole + head).count(b"HTTP/1.1 200 ") == 1  # answered, then closed
 
 
 @pytest.mark.parametrize(
