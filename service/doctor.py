@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from datetime import UTC, datetime, timedelta
 from pathlib import Path
 from typing import Any
+from urllib.parse import urlsplit
 from zoneinfo import available_timezones
 
 from service import pipeline
@@ -58,8 +59,19 @@ def _the_rest(settings: Settings, clock: Clock) -> Iterator[Finding]:
         yield _finding("mail server", True, pipeline.examine_mail(settings))
     except LeafturnError as error:
         yield _finding("mail server", False, str(error), error.exit_code)
+    yield _links(settings)
     yield _clock(clock, newest)
     yield _disk(settings)
+
+
+def _links(settings: Settings) -> Finding:
+    """Where the links of a digest lead; RFC 8058 section 3.1 asks for https, or no mail program offers the way out."""
+    url = urlsplit(settings.web.base_url)
+    if url.hostname in ("localhost", "127.0.0.1", "::1"):
+        return _finding("links", False, f"digests lead to {url.geturl()}, which no reader can open; set web.base_url")
+    if url.scheme != "https":
+        return _finding("links", False, f"digests lead to {url.geturl()}; set web.base_url to an https address")
+    return _finding("links", True, f"digests lead to {url.geturl()}")
 
 
 def _clock(clock: Clock, newest: datetime | None) -> Finding:

@@ -16,7 +16,7 @@ from service.delivery import mime
 from service.delivery.sender import Mail, Skip
 from service.editions import gate, render, wording
 from service.editions.compose import Composed
-from service.errors import NotFound, WrongState
+from service.errors import NotFound, Refused, WrongState
 from service.settings import Settings
 from service.store import editions, network
 from service.store.base import Store
@@ -25,6 +25,7 @@ from service.store.outbox import Outgoing, message_id
 from service.tokens import Tokens
 
 Progress = Callable[[int, int | None, str], None] | None
+LONGEST_NOTE = 1500  # characters: a few words of the coordinator's own
 
 
 # --- what an edition freezes --------------------------------------------------------------------
@@ -95,6 +96,8 @@ def render_all(
 
     `more_names` are names that came after the draft, which a note could hold.
     """
+    if len(edition.note) > LONGEST_NOTE:
+        raise Refused(f"the note has {len(edition.note)} characters; shorten it to {LONGEST_NOTE}, to be read in a ute")
     named = names(known) | more_names
     gate.refuse({"note": edition.note}, named, _public(known))
     found = {}

@@ -9,6 +9,9 @@ from select import select
 
 import pytest
 
+from service import doctor
+from service.settings import Settings, WebSettings
+
 LEAFTURN = str(Path(sys.executable).with_name("leafturn"))
 DISTRICT = """
 [[district]]
@@ -99,7 +102,7 @@ def test_the_doctor_says_what_is_well_and_what_is_not(home: Path) -> None:
     (home / "sick.toml").write_text('[mail]\nport = 1\nstarttls = "never"\n', encoding="utf-8")
     done = leafturn(home, "doctor", "--settings", "sick.toml", "--json")
     findings = {each["what"]: each for each in json.loads(done.stdout)["findings"]}
-    assert list(findings) == ["settings", "store", "mail server", "clock", "disk"]
+    assert list(findings) == ["settings", "store", "mail server", "links", "clock", "disk"]
     assert not findings["mail server"]["well"]
     assert "127.0.0.1:1" in findings["mail server"]["text"]
     assert findings["store"]["well"], findings["store"]["text"]
@@ -127,6 +130,17 @@ def test_the_doctor_finds_secrets_that_others_can_read(home: Path) -> None:
     assert not settings["well"]
     assert "chmod 600 var/keys" in settings["text"]
     assert json.loads(leafturn(home, "doctor", "--json").stdout)["findings"][0]["well"]
+
+
+def test_the_doctor_looks_where_the_links_of_digests_lead() -> None:
+    for url, words in {
+        "http://localhost:8765": "no reader can open",
+        "http://leaf.example.org": "https",
+        "https://leaf.example.org": "",
+    }.items():
+        found = doctor._links(Settings(web=WebSettings(base_url=url)))
+        assert found["well"] == (not words)
+        assert words in found["text"]
 
 
 def test_the_doctor_outlives_a_store_that_has_no_url(home: Path) -> None:

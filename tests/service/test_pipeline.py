@@ -178,6 +178,13 @@ def test_an_unsafe_note_stops_the_signing(full: Store, settings: Settings, clock
         assert sum(outbox.counts(c, ID).values()) == 0
 
 
+def test_a_note_is_a_few_words(full: Store, settings: Settings, clock: SetClock) -> None:
+    pipeline.draft(full, "north", clock=clock)
+    with pytest.raises(Refused, match="shorten it to 1500"):
+        pipeline.sign(full, settings, ID, by="ivy", clock=clock, note="Fog. " * 301)
+    assert pipeline.sign(full, settings, ID, by="ivy", clock=clock, note="Fog. " * 300)["slips"] == READERS
+
+
 def test_an_unsigned_edition_is_not_sent(full: Store, settings: Settings, clock: SetClock) -> None:
     pipeline.draft(full, "north", clock=clock)
     with pytest.raises(WrongState, match="signed"):
