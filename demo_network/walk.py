@@ -135,6 +135,7 @@ def _settings(folder: Path, port: int) -> Settings:
         }
     )
     text = f'data_dir = "{store}"\nkeys_file = "{keys}"\n\n[store]\nurl = "{ours.store.url}"\n'
+    text += "\n[web]\nshow_days = 36500  # so that links of a season long past still open\n"
     (folder / "leafturn.toml").write_text(text, encoding="utf-8")
     return ours
 

@@ -18,7 +18,7 @@ from rich.console import Console
 from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeRemainingColumn
 
 from rules.digests import plain
-from service import __version__, doctor, pipeline
+from service import __version__, doctor, pipeline, wordy
 from service import settings as settings_file
 from service.clock import SystemClock
 from service.errors import BadInput, LeafturnError, Unreachable, UnsafeText
@@ -65,7 +65,10 @@ def doctor_command(config: Config = None, as_json: Json = False) -> None:
     """Check settings, store, mail server, clock and disk, in plain words."""
     with _answering(as_json) as answer:
         findings = doctor.examine(config, SystemClock())
-        answer({"findings": findings, "well": all(found["well"] for found in findings)})
+        if as_json:
+            answer({"findings": findings, "well": all(found["well"] for found in findings)})
+        else:
+            answer({found["what"]: ("" if found["well"] else "TO MEND: ") + found["text"] for found in findings})
         if not all(found["well"] for found in findings):
             raise typer.Exit(max(found["exit_code"] for found in findings))
 
@@ -226,7 +229,8 @@ def _answering(as_json: bool) -> Any:
         if as_json:
             typer.echo(json.dumps(plain(outcome), ensure_ascii=False, indent=2))
         else:
-            _in_words(outcome)
+            for line in wordy.lines(outcome):
+                typer.echo(line)
 
     try:
         yield answer
@@ -281,41 +285,11 @@ def _explain(error: LeafturnError, as_json: bool) -> None:
         body = {"error": str(error), "refused": refusals, "marks": marks, "try_again": not error.permanent}
         typer.echo(json.dumps(plain(body), ensure_ascii=False, indent=2))
         return
-    typer.echo(f"leafturn: {_shown(str(error))}", err=True)
+    typer.echo(f"leafturn: {wordy.shown(str(error))}", err=True)
     for refusal in refusals[:50]:
         line = f"row {refusal.row}, {refusal.field} = {refusal.value!r}: {refusal.remedy}"
-        typer.echo(f"  {_shown(line)}", err=True)
+        typer.echo(f"  {wordy.shown(line)}", err=True)
     if len(refusals) > 50:
         typer.echo(f"  … and {len(refusals) - 50} more; --json lists them all", err=True)
     for where, word, reason in marks:
         typer.echo(f"  {where}: {word!r}: {reason}", err=True)
-
-
-def _in_words(outcome: Outcome) -> None:
-    """Counts as lines; anything that is a list, one line each; text as it is."""
-    for name, value in outcome.items():
-        label = name.replace("_", " ")
-        if isinstance(value, str) and "\n" in value:
-            typer.echo(_shown(value))
-        elif isinstance(value, Mapping):
-            typer.echo(f"{label}:")
-            for inner, amount in value.items():
-                typer.echo(f"  {inner}: {amount}")
-        elif isinstance(value, Sequence) and not isinstance(value, str):
-            typer.echo(f"{label}: {len(value) or 'nothing'}")
-            for item in value:
-                typer.echo(f"  {_one_line(item)}")
-        elif value is not None and value != "":
-            typer.echo(_shown(f"{label}: {value}"))
-
-
-def _shown(text: str) -> str:
-    """A text with what would steer a terminal written out: files and servers say things too."""
-    return "".join(sign if sign.isprintable() or sign == "\n" else ascii(sign)[1:-1] for sign in text)
-
-
-def _one_line(item: Any) -> str:
-    if isinstance(item, Mapping):
-        shown = [f"{value}" if name in ("says", "text") else f"{name} {value}" for name, value in item.items()]
-        return _shown(" · ".join(shown))
-    return _shown(str(item))

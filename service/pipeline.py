@@ -369,7 +369,7 @@ def _zone(store: Store, district_id: str, as_of: datetime) -> ZoneInfo:
 
 
 def _tokens(settings: Settings) -> Tokens:
-    return Tokens(settings_file.keys(settings))
+    return Tokens(settings_file.keys(settings), settings.web.show_days)
 
 
 def _signer(people: Sequence[Person], by: str) -> Person:

@@ -67,6 +67,7 @@ class WebSettings(_Group):
     )
     host: str = Field("127.0.0.1", description="The address the pages listen on.")
     port: int = Field(8765, ge=1, le=65535, description="The port the pages listen on.")
+    show_days: int = Field(120, ge=1, le=40_000, description="How long the link in a digest opens it as a page [days].")
 
 
 class Settings(BaseSettings):

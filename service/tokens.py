@@ -13,7 +13,7 @@ from service.errors import BadToken
 
 LIFETIMES: dict[str, timedelta | None] = {
     "unsubscribe": None,  # a way out must work for as long as the mail is kept
-    "show": timedelta(days=120),
+    "show": timedelta(days=120),  # unless the settings say otherwise
 }
 REMEDY = "Open the link in your newest digest instead."
 
@@ -21,10 +21,11 @@ REMEDY = "Open the link in your newest digest instead."
 class Tokens:
     """Makes and reads tokens with a list of keys, newest first; old keys still read, only the first signs."""
 
-    def __init__(self, keys: Sequence[str]) -> None:
+    def __init__(self, keys: Sequence[str], show_days: int = 120) -> None:
         if not keys or any(len(key) < 32 for key in keys):
             raise ValueError("tokens need at least one key of 32 characters or more")
         self._keys = list(reversed(keys))
+        self._lifetimes = LIFETIMES | {"show": timedelta(days=show_days)}
 
     def make(self, purpose: str, subject: str, at: datetime) -> str:
         """A token that lets its holder do one thing to one subject."""
@@ -38,7 +39,7 @@ class Tokens:
             made_at = datetime.fromtimestamp(int(made), UTC)
         except (BadSignature, ValueError, TypeError, OverflowError) as error:
             raise BadToken(f"This link is not one of ours, or it was cut short on its way. {REMEDY}") from error
-        lifetime = LIFETIMES[purpose]
+        lifetime = self._lifetimes[purpose]
         if lifetime is not None and at > made_at + lifetime:
             raise BadToken(f"This link is more than {lifetime.days} days old. {REMEDY}")
         return str(subject)

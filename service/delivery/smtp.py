@@ -145,7 +145,7 @@ class SmtpSender:
         if "STARTTLS" in str(error):
             remedy = "nothing was sent in the clear; name one that does, or for one on this machine: mail.starttls"
             return f"the mail server {self._where} does not offer STARTTLS; {remedy}"
-        return f"the mail server {self._where} does not answer: {error}"
+        return f"the mail server {self._where} does not answer ({error}); see mail.host and mail.port"
 
 
 async def _greet(connection: aiosmtplib.SMTP) -> None:
