@@ -26,7 +26,7 @@ EMAIL = re.compile(
     r"(?=.{3,254}\Z)[A-Za-z0-9](?:[A-Za-z0-9._%+'-]{0,62}[A-Za-z0-9_+-])?"
     r"@(?:[A-Za-z0-9](?:[A-Za-z0-9-]{0,61}[A-Za-z0-9])?\.)+[A-Za-z]{2,63}"
 )
-RUN_BY_SPREADSHEETS = "=+-@"
+RUN_BY_SPREADSHEETS = "=+-@＝＋－＠"  # the wide ones by spreadsheets set up for East Asia
 TURNS_TEXT = set("\u202a\u202b\u202c\u202d\u202e\u2066\u2067\u2068\u2069")  # hide what a line really says
 
 

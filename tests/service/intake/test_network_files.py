@@ -323,6 +323,7 @@ def test_paddocks_are_checked_cell_by_cell(desk: Desk) -> None:
     wrong({"row_spacing_m": "25"}, "row_spacing_m", "to 3")
     wrong({"plants_per_m2": "-1"}, "plants_per_m2", "from 0.1")
     wrong({"name": "=HYPERLINK(1)"}, "name", "formula")
+    wrong({"name": "\uff1dHYPERLINK(1)"}, "name", "formula")  # the wide sign, which some run too
     wrong({"name": "<script>x</script>"}, "name", "markup")
     wrong({"id": "p 1"}, "id", "write an id")
     wrong({"name": ""}, "name", "empty")
