@@ -56,20 +56,20 @@ def trail(store: Store, edition: Edition, reader: str, book: Book, again: Again,
 
 
 def _compare(trace: Trace, fresh: Said | None, kept_hash: str | None, others: list[str]) -> tuple[bool, str]:
-    """Whether the digest was said again to equal bytes, and what was compared."""
-    if others:
-        names = ", ".join(others)
-        return trace.same, f"{names} changed since; compared by sentences and by the hashes of rows and statements only"
+    """Whether the digest was said again, and what was compared: bytes where that can be, else hashes."""
     if kept_hash is None:
         return trace.same, "not signed yet; compared by sentences and by the hashes of rows and statements"
     if fresh is None:
         return False, "worked out again, this reader would get no digest"
     again = mailing.canonical_hash(render.render(view(fresh.slip, fresh.statements, fresh.head, fresh.book)))
-    if again != kept_hash:
-        return False, "subject, text and HTML, rendered again, are other bytes than those signed"
-    if not trace.same:
+    if again == kept_hash and not trace.same:
         return False, "the bytes are equal, but rows or statements behind them were altered"
-    return True, "subject, text and HTML, rendered again from the rows, are equal to the byte"
+    if again == kept_hash:
+        return True, "subject, text and HTML, rendered again from the rows, are equal to the byte"
+    if others:
+        names = ", ".join(others)
+        return trace.same, f"{names} changed since, so bytes can't be compared; hashes of rows and statements were"
+    return False, "subject, text and HTML, rendered again, are other bytes than those signed"
 
 
 def _standing(store: Store, known: Known) -> Standing:

@@ -5,13 +5,14 @@ from email import message_from_bytes, policy
 from pathlib import Path
 
 import pytest
-from sqlalchemy import text
+from sqlalchemy import text, update
 
 from service import mailing, pipeline
 from service.clock import SetClock
 from service.delivery.sender import Mail
 from service.errors import WrongState
 from service.settings import Settings
+from service.store import editions
 from service.store.base import Store
 from service.store.leases import Job
 from service.tokens import Tokens
@@ -49,3 +50,23 @@ def test_the_head_knows_the_warm_half_of_its_hemisphere(latitude: float, month: 
     there = known(as_of=at, district=a_district(latitude=latitude))
     assert there.today == date(2026, month, NOW.day)
     assert mailing.head(ID, there).warm_half is warm
+
+
+def test_a_trail_across_versions_says_what_changed_and_compares_hashes(store: Store, tmp_path: Path) -> None:
+    small_network.fill(store)
+    clock = SetClock(small_network.CUT_OFF)
+    settings = Settings(data_dir=str(tmp_path), keys_file=str(tmp_path / "keys"))
+    pipeline.draft(store, "north", clock=clock)
+    pipeline.sign(store, settings, ID, by="ivy", clock=clock)
+    with store.writing() as c:
+        hashes = editions.get(c, ID).hashes | {"code": "of another version"}
+        c.execute(update(editions.edition).values(hashes=hashes))
+    assert "equal to the byte" in pipeline.trail(store, ID, "s1")["compared"]
+    with store.writing() as c:
+        c.execute(text("UPDATE slip SET canonical_hash = 'of other words' WHERE subscriber = 's1'"))
+    found = pipeline.trail(store, ID, "s1")
+    assert found["equal"]
+    assert found["compared"].startswith("code changed since")
+    with store.writing() as c:
+        c.execute(text("UPDATE observation SET note = 'quietly added' WHERE key = 'csv:1'"))
+    assert not pipeline.trail(store, ID, "s1")["equal"]
