@@ -9,7 +9,7 @@ from pathlib import Path
 from typing import Any
 
 import pytest
-from sqlalchemy import text, update
+from sqlalchemy import select, text, update
 
 from rules.records import Observation, Paddock, Reportable, StationDay
 from service import mailing, pipeline
@@ -406,6 +406,29 @@ def test_another_version_than_the_one_that_signed_sends_nothing_and_fails_nothin
     with full.reading() as c:
         assert outbox.counts(c, ID)["queued"] == READERS
         assert editions.get(c, ID).state == ("sent" if begun else "signed")
+
+
+@pytest.mark.parametrize("altered", [READERS, 1], ids=["all", "one"])
+def test_a_program_that_says_all_of_it_otherwise_sends_nothing(
+    full: Store, settings: Settings, clock: SetClock, tmp_path: Path, altered: int
+) -> None:
+    """One digest that was altered by itself fails alone; if all differ, it is the program, and they wait."""
+    pipeline.draft(full, "north", clock=clock)
+    pipeline.sign(full, settings, ID, by="ivy", clock=clock)
+    slip = editions.slip
+    with full.writing() as c:
+        readers = c.scalars(select(slip.c.subscriber).order_by(slip.c.subscriber)).all()[:altered]
+        c.execute(update(slip).where(slip.c.subscriber.in_(readers)).values(canonical_hash="of other words"))
+    with pipeline.mail_server(tmp_path / "mail") as server:
+        ours = settings.model_copy(update={"mail": MailSettings(port=server.port, starttls="never")})
+        if altered == READERS:
+            with pytest.raises(WrongState, match="what a digest says has changed; nothing was sent"):
+                pipeline.send(full, ours, ID, clock=clock)
+        else:
+            counts = pipeline.send(full, ours, ID, clock=clock)
+            assert (counts["sent"], counts["failed"]) == (READERS - 1, 1)
+    with full.reading() as c:
+        assert outbox.counts(c, ID)["queued"] == (READERS if altered == READERS else 0)
 
 
 # --- listed pests, by whatever door ------------------------------------------------------------------
