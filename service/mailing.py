@@ -18,6 +18,7 @@ from service.editions import gate, render, wording
 from service.editions.compose import Composed
 from service.errors import NotFound, Refused, WrongState
 from service.settings import Settings
+from service.shipped import code_hash
 from service.store import editions, network
 from service.store.base import Store
 from service.store.leases import Job
@@ -53,6 +54,7 @@ def hashes(book: Book) -> dict[str, str]:
         "catalogue": book.catalogue_hash,
         "templates": render.templates_hash(),
         "renderer": render.RENDERER,
+        "code": code_hash("rules", "service.signals", "service.editions"),
     }
 
 
@@ -73,7 +75,7 @@ def expect_sendable(store: Store, id: str, book: Book) -> None:
         edition = editions.get(c, id)
     if edition.state not in ("signed", "sent"):
         return
-    others = changed(edition, hashes(book))
+    others = [name for name in changed(edition, hashes(book)) if name != "code"]  # code shows in the bytes, or not
     if others or _all_said_otherwise(store, edition, book):
         what = ", ".join(others) or "what a digest says has"
         remedy = "nothing was sent; send it with the version of this program that signed it"
