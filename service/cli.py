@@ -13,12 +13,11 @@ from pathlib import Path
 from typing import Annotated, Any
 
 import typer
-import uvicorn
 from rich.console import Console
 from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, TimeRemainingColumn
 
 from rules.digests import plain
-from service import __version__, doctor, pipeline, wordy
+from service import __version__, wordy
 from service import settings as settings_file
 from service.clock import SystemClock
 from service.errors import BadInput, LeafturnError, Unreachable, UnsafeText
@@ -57,12 +56,14 @@ def init(
 ) -> None:
     """Write a commented settings file, make the link keys and the empty store."""
     with _answering(as_json) as answer:
-        answer(pipeline.init(file))
+        answer(_steps().init(file))
 
 
 @app.command("doctor", rich_help_panel=OPERATOR)
 def doctor_command(config: Config = None, as_json: Json = False) -> None:
     """Check settings, store, mail server, clock and disk, in plain words."""
+    from service import doctor
+
     with _answering(as_json) as answer:
         findings = doctor.examine(config, SystemClock())
         if as_json:
@@ -89,11 +90,13 @@ def demo(
 def serve(config: Config = None) -> None:
     """Serve the pages that mailed links open: the week's digest, and the way out."""
     with _answering(False):
-        from service.web import app  # the web framework is not loaded by any other command
+        import uvicorn  # the server and the web framework are not loaded by any other command
+
+        from service.web import app
 
         settings = settings_file.read(config)
         with _store(config) as store:
-            pages = app.make_app(pipeline.Pages(store, settings))
+            pages = app.make_app(_steps().Pages(store, settings))
             uvicorn.Server(app.serving(pages, settings.web.host, settings.web.port)).run()
 
 
@@ -111,8 +114,10 @@ def take(
     as_json: Json = False,
 ) -> None:
     """Take a file in: all of it, or nothing and a list of what to mend."""
+    from service import taking
+
     with _answering(as_json) as answer, _store(config) as store, _progress(as_json) as progress:
-        taken = pipeline.take(
+        taken = taking.take(
             store,
             file,
             clock=SystemClock(),
@@ -137,14 +142,14 @@ def run(
 ) -> None:
     """Run the rules now, or as of a past moment, and list what they say."""
     with _answering(as_json) as answer, _store(config) as store:
-        answer(pipeline.run_rules(store, district, clock=SystemClock(), as_of=as_of))
+        answer(_steps().run_rules(store, district, clock=SystemClock(), as_of=as_of))
 
 
 @edition.command("draft")
 def edition_draft(district: District, config: Config = None, as_json: Json = False) -> None:
     """Draft this week's digest from what is known now."""
     with _answering(as_json) as answer, _store(config) as store:
-        answer(pipeline.draft(store, district, clock=SystemClock()))
+        answer(_steps().draft(store, district, clock=SystemClock()))
 
 
 @edition.command("show")
@@ -156,7 +161,7 @@ def edition_show(
 ) -> None:
     """Show an edition's statements, how many readers each touches, and what the gate marks."""
     with _answering(as_json) as answer, _store(config) as store:
-        answer(pipeline.show(store, id, reader=reader))
+        answer(_steps().show(store, id, reader=reader))
 
 
 @edition.command("hold")
@@ -171,7 +176,7 @@ def edition_hold(
 ) -> None:
     """Hold one statement back, or the whole edition."""
     with _answering(as_json) as answer, _store(config) as store:
-        answer(pipeline.hold(store, id, statement, by=by, reason=reason, clock=SystemClock(), lift=lift))
+        answer(_steps().hold(store, id, statement, by=by, reason=reason, clock=SystemClock(), lift=lift))
 
 
 @edition.command("sign")
@@ -185,14 +190,14 @@ def edition_sign(
     """Sign: freeze recipients and wording. Nothing leaves before it is sent."""
     with _answering(as_json) as answer, _store(config) as store, _progress(as_json) as progress:
         settings = settings_file.read(config)
-        answer(pipeline.sign(store, settings, id, by=by, note=note, clock=SystemClock(), progress=progress))
+        answer(_steps().sign(store, settings, id, by=by, note=note, clock=SystemClock(), progress=progress))
 
 
 @edition.command("send")
 def edition_send(id: EditionId, config: Config = None, as_json: Json = False) -> None:
     """Let a signed edition go, and deliver it. Run it again to send what is left."""
     with _answering(as_json) as answer, _store(config) as store, _progress(as_json) as progress:
-        answer(pipeline.send(store, settings_file.read(config), id, clock=SystemClock(), progress=progress))
+        answer(_steps().send(store, settings_file.read(config), id, clock=SystemClock(), progress=progress))
 
 
 @app.command(rich_help_panel=COORDINATOR)
@@ -205,7 +210,7 @@ def trail(
 ) -> None:
     """Take a sentence back to its rows and rule, and say the digest again to equal bytes."""
     with _answering(as_json) as answer, _store(config) as store:
-        found = pipeline.trail(store, id, reader, sentence=sentence)
+        found = _steps().trail(store, id, reader, sentence=sentence)
         answer(found)
         if not found["equal"]:
             raise typer.Exit(1)
@@ -219,6 +224,13 @@ def _version(version: Annotated[bool, typer.Option("--version", help="Print the 
 
 
 # --- the same for every command -----------------------------------------------------------------
+
+
+def _steps() -> Any:
+    """The pipeline, loaded by the commands that run its steps; help and a take need not wait for it."""
+    from service import pipeline
+
+    return pipeline
 
 
 @contextmanager
@@ -255,7 +267,9 @@ def _of_the_machine(error: OSError) -> Unreachable:
 
 @contextmanager
 def _store(config: Path | None) -> Any:
-    store = pipeline.open_store(settings_file.read(config))
+    from service import taking
+
+    store = taking.open_store(settings_file.read(config))
     try:
         yield store
     finally:

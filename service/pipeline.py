@@ -5,11 +5,11 @@
 The command line, the pages and the demo call these and nothing below them. Only this file knows the order.
 """
 
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Iterator, Sequence
 from contextlib import closing, contextmanager
 from dataclasses import replace
 from datetime import datetime, timedelta
-from functools import cache, partial
+from functools import cache
 from pathlib import Path
 from typing import Any
 from urllib.parse import urlsplit
@@ -19,24 +19,23 @@ from rules.book import Book
 from rules.digests import plain
 from rules.records import Known, Person, Signal
 from rules.slip import Edition
-from service import intake, mailing, rulebook, showing, signals, tracing, weather
+from service import mailing, rulebook, showing, signals, tracing
 from service import settings as settings_file
 from service.clock import Clock, iso_week, local_day
 from service.delivery import smtp, worker
 from service.delivery.maildir_server import MaildirServer
 from service.editions.compose import Composed, compose
-from service.errors import BadInput, Refused, WrongState
-from service.intake.kinds import kind_of
-from service.intake.network_files import take_network
+from service.errors import Refused, WrongState
 from service.known import know
 from service.settings import Settings
-from service.store import audit, editions, health, jobs, network, outbox, rules, schema
+from service.store import audit, editions, health, jobs, network, outbox, rules
 from service.store import signals as signal_store
 from service.store.base import Store, file_of
+from service.taking import Outcome, Progress
+from service.taking import open_store as open_store
+from service.taking import take as take
 from service.tokens import Tokens
 
-Outcome = dict[str, Any]
-Progress = Callable[[int, int | None, str], None] | None
 LONGEST_STEP = timedelta(minutes=10)  # a step that is not finished by then may be taken over
 SIGNERS = frozenset({"coordinator", "deputy"})
 
@@ -54,47 +53,9 @@ def init(file: Path) -> Outcome:
         return {"settings": str(file), "keys": settings.keys_file, "store": store.name, "next": "leafturn doctor"}
 
 
-def open_store(settings: Settings) -> Store:
-    """The store in its newest shape; an empty one is filled with tables."""
-    store = Store.open(settings.store.url, settings.store.busy_s)
-    schema.upgrade(store)
-    return store
-
-
 def store_file(settings: Settings) -> Path | None:
     """The file that the store is, if it is one."""
     return file_of(settings.store.url)
-
-
-# --- in -----------------------------------------------------------------------------------------
-
-
-def take(
-    store: Store,
-    file: Path,
-    *,
-    clock: Clock,
-    progress: Progress = None,
-    history: bool = False,
-    district: str | None = None,
-    source: str = "csv",
-    keep_good: Path | None = None,
-    revise: bool = False,
-) -> Outcome:
-    """Take a file in, whatever it holds: all of it, or nothing and what to mend."""
-    observed = partial(intake.take_observations, source=source, district=district, keep_good=keep_good, revise=revise)
-    try:
-        with store.arrivals():
-            if (kind := kind_of(file)) == "observations":
-                counts = observed(store, file, clock=clock, history=history, progress=progress)
-            elif kind == "station_days":
-                counts = weather.take_station_days(store, file, clock=clock, history=history)
-            else:
-                counts = take_network(store, file, clock=clock)
-    except BadInput as error:
-        raise intake.unreadable(store, file, error, clock=clock) from None
-    first = counts.pop("to_the_hotline", None)  # read before anything else; the file's name may be what it is about
-    return {"to_the_hotline": first, "file": "this file" if first else file.name, "kind": kind, **counts}
 
 
 # --- what the rules say -------------------------------------------------------------------------

@@ -15,7 +15,6 @@ import numpy.typing as npt
 import pyarrow as pa
 import pyarrow.compute as pc
 import pyarrow.csv as arrow_csv
-from psycopg import OperationalError as PostgresGone
 from sqlalchemy import Connection, select, text
 
 from service.errors import StoreDown
@@ -126,6 +125,8 @@ def _texts(column: pa.Array) -> list[Any]:
 
 
 def _copy(raw: Any, into: str, table: pa.Table, constants: dict[str, Any]) -> None:
+    from psycopg import OperationalError as PostgresGone  # not loaded where the store is a file
+
     columns = ", ".join(f'"{name}"' for name in [*constants, *table.column_names])
     try:
         with raw.cursor() as cursor, cursor.copy(f"COPY {into} ({columns}) FROM STDIN (FORMAT csv)") as copy:
