@@ -14,6 +14,7 @@ from rules.book import Book, Pest
 from rules.records import Ask, Known, Look, Signal, Subscriber
 from rules.slip import Line, Slip, Statement
 from service.editions import effort, privacy, rank
+from service.editions.gaps import Gaps, gaps
 from service.editions.offers import Offer, joined, offers, told_crops
 from service.editions.privacy import DISTRICT, OWN, Counts, Near, Vantage, View
 from service.editions.quiet import quiet_until
@@ -46,6 +47,7 @@ class Scene:
     offers: Sequence[Offer]
     counted: Mapping[str, Sequence[Statement]]  # by pest: counts first, then what to hold against them
     spots: Sequence[int]
+    gaps: Gaps
 
 
 def compose(
@@ -67,7 +69,7 @@ def compose(
             by_pest[statement.pest].append(statement)
     spots = {spot for there in seen.tallies.values() for spot in there} | {offer.spot for offer in offered}
     placed = sorted(spot for spot in spots if spot is not None)
-    scene = Scene(known, book, seen, Stages(known), said, by_pest, placed)
+    scene = Scene(known, book, seen, Stages(known), said, by_pest, placed, gaps(known))
     return Composed(statements, {reader.id: _slip(reader, scene) for reader in readers})
 
 
@@ -266,7 +268,7 @@ def _found(counts: Counts) -> list[int]:
 
 
 def _own(seat: Seat, scene: Scene) -> dict[str, Any]:
-    """What the reader is told where nothing is asked: how much looking stands behind the silence."""
+    """How much looking stands behind the silence where nothing is asked, and whether weather is missing."""
     told = {pest: each for pest, each in seat.counts.items() if _may_count(pest, scene)}
     own: dict[str, Any] = {
         "looks": sum(each.near_looks for each in seat.counts.values()),
@@ -279,4 +281,6 @@ def _own(seat: Seat, scene: Scene) -> dict[str, Any]:
         own["hidden"] = True
     elif unlooked := [pest for pest, each in seat.counts.items() if not each.looks]:
         own["unlooked"] = unlooked[:MOST_AROUND]
+    if missing := scene.gaps.near(seat.cells):
+        own["weather"] = [missing, scene.gaps.days]
     return own

@@ -32,12 +32,12 @@ def view(slip: Slip, statements: Mapping[str, Statement], head: Head, book: Book
         before_looking=_before_looking(cards, head, book),
         cards=cards,
         keep_in_mind=tuple(_mind(line, statements, book) for line in slip.mind),
-        silence=() if cards else tuple(_silence(slip, head)),
+        silence=() if cards else (*_silence(slip, head), *_weather(slip)),
         around=tuple(_around(slip, statements, head, book)),
         note=(Sentence(head.note, "note"),) if head.note else (),
         signed_by=head.signed_by,
         before_acting=_before_acting(book),
-        foot=tuple(_foot(cards, head)),
+        foot=tuple(_foot(cards, slip, head)),
     )
 
 
@@ -151,6 +151,15 @@ def _silence(slip: Slip, head: Head) -> list[Sentence]:
     return [Sentence(text, "reader:looks")]
 
 
+def _weather(slip: Slip) -> list[Sentence]:
+    """Weather that is missing near the reader: no word of a hatch says nothing then."""
+    if "weather" not in slip.own:
+        return []
+    missing, days = slip.own["weather"]
+    when = "yesterday" if days == 1 else f"{'all' if missing == days else missing} of the last {days} days"
+    return [Sentence(f"Weather near you is missing for {when}, so we may miss a hatch.", "reader:weather")]
+
+
 def _hidden(head: Head) -> Sentence:
     text = (
         f"Fewer than {head.holdings_to_hide} farms here can hide each other, "
@@ -208,14 +217,14 @@ _EFFORT = {"one_reporter": _one_reporter, "more_looking": _more_looking}
 # --- the foot --------------------------------------------------------------------------------------
 
 
-def _foot(cards: Sequence[Card], head: Head) -> list[Sentence]:
+def _foot(cards: Sequence[Card], slip: Slip, head: Head) -> list[Sentence]:
     where = (
         f"Distances run to the middle of an area with at least {head.holdings_to_hide} farms, "
         "so that nobody's paddock is given away."
     )
     found = [Sentence(USUAL, "fixed:usual"), Sentence(HOW, "fixed:how"), Sentence(where, "fixed:where")]
     if cards:
-        found.append(Sentence(NOT_KNOWN, "fixed:not_known"))
+        found += [*_weather(slip), Sentence(NOT_KNOWN, "fixed:not_known")]
     return found + [Sentence(f"Weather: {each}.", f"weather:{each}") for each in head.attributions]
 
 

@@ -4,24 +4,26 @@ Eight farms lie within a few kilometres of `HOME`, in one H3 cell of resolution 
 """
 
 from collections.abc import Iterable
-from datetime import timedelta
-from math import cos, radians
+from datetime import date, timedelta
+from functools import cache
+from math import cos, nan, radians
 from typing import Any
 
 from rules.book import Book
 from rules.digests import digest, plain
-from rules.records import Ask, Evidence, Holding, Known, Observation, Paddock, Place, Signal, Subscriber
+from rules.records import Ask, CellDays, Evidence, Holding, Known, Observation, Paddock, Place, Signal, Subscriber
 from rules.slip import Head, Slip, SlipView
 from service import places, rulebook
 from service.editions.compose import Composed, compose
 from service.editions.wording import view
 from tests.builders import LAT, LON, NOW, TODAY, a_holding, a_paddock, a_subscriber, an_observation
-from tests.known import known
+from tests.known import cell_days, known
 
 MITE, FLEA, CUTWORM = "redlegged_earth_mite", "lucerne_flea", "cutworms"
 BOOK: Book = rulebook.load()
 HOME = places.centre(places.parent(places.cell_of(LAT, LON), 5))
 HEAD = Head("north-2026-W20", "North Bank", TODAY, 5, False, "Ivy Marsh", attributions=("the invented buoys",))
+OPENED = date(2026, 2, 15)  # when the season did
 # Where the eight farms lie, in kilometres north and east of HOME.
 FARMS = ((0.0, 0.0), (2.5, 1.0), (-2.5, 1.5), (1.0, -3.5), (4.0, -1.0), (-4.0, -1.5), (0.5, 4.5), (-1.0, -5.0))
 
@@ -65,9 +67,19 @@ def look(i: int, present: bool, *, ago: int = 2, pest: str = MITE, **changes: An
     return an_observation(f"csv:{pest}-{i}-{ago}", **values)
 
 
+@cache
+def weather(no_temperature: frozenset[int] = frozenset(), no_rain: frozenset[int] = frozenset()) -> CellDays:
+    """The weather of the farms and of the postcode up to yesterday, but for some days so many days ago."""
+    ago = range((TODAY - OPENED).days, 0, -1)
+    cells = sorted({places.cell_of(LAT, LON), *(at(*farm).cell for farm in FARMS)})
+    mean, rain = ([nan if n in gone else 12.0 for n in ago] for gone in (no_temperature, no_rain))
+    return cell_days(OPENED, mean, rain, cells)
+
+
 def district(rows: Iterable[Observation] = (), **changes: Any) -> Known:
     """The district as known on Tuesday 12 May 2026."""
-    values: dict[str, Any] = {"observations": rows, "paddocks": fields(), "holdings": farms()} | changes
+    values: dict[str, Any] = {"observations": rows, "paddocks": fields(), "holdings": farms(), "weather": weather()}
+    values |= changes
     return known(**values)
 
 

@@ -47,6 +47,13 @@ def nobody_looked() -> SlipView:
     return cast.said(cast.edition(paddocks=cast.fields(p0=SOWN)))
 
 
+def weather_missing() -> SlipView:
+    """Looks near, nothing asked, and two days whose weather did not come."""
+    rows = [row for row in neighbours() if not row.present]
+    gone = cast.weather(no_rain=frozenset({1, 5}))
+    return cast.said(cast.edition(rows, paddocks=cast.fields(p0=SOWN), weather=gone))
+
+
 def dressed_seed() -> SlipView:
     """The hatch, on a paddock sown with dressed seed that may be up."""
     dressed = SOWN | {"seed_dressing": True}
@@ -59,7 +66,7 @@ def before_emergence() -> SlipView:
 
 
 ALL: dict[str, Callable[[], SlipView]] = {
-    each.__name__: each for each in (asks, no_ask, nobody_looked, dressed_seed, before_emergence)
+    each.__name__: each for each in (asks, no_ask, nobody_looked, weather_missing, dressed_seed, before_emergence)
 }
 
 if __name__ == "__main__":
