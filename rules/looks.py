@@ -15,6 +15,11 @@ def is_trap_reading(row: Observation) -> bool:
     return row.trap is not None or row.unit == "per_trap_night"
 
 
+def is_find(row: Observation) -> bool:
+    """Whether a row found the pest; one who is unsure what it was has not."""
+    return row.present and row.confidence != "unsure"
+
+
 def derive(
     observations: Sequence[Observation], spots_planned: Mapping[str, int], uninformative: Collection[str] = frozenset()
 ) -> list[Look]:
@@ -34,7 +39,8 @@ def derive(
     -------
     list of Look
         By day, pest, place and reporter. A look is one district, paddock (or cell where no paddock is
-        given), pest, reporter and day; found if any row found it; knowable once all its rows are.
+        given), pest, reporter and day; found if any row surely found it; knowable once all its rows are.
+        Where someone was unsure and nothing was surely found, it is neither a find nor an absence.
 
     Notes
     -----
@@ -52,8 +58,9 @@ def derive(
 
 def _look(rows: list[Observation], spots_planned: Mapping[str, int], uninformative: Collection[str]) -> Look:
     rows = sorted(rows, key=lambda row: row.key)
-    first, found = rows[0], any(row.present for row in rows)
-    says_nothing = not found and all(row.key in uninformative for row in rows)
+    first, found = rows[0], any(is_find(row) for row in rows)
+    unsure = any(row.present for row in rows)
+    says_nothing = not found and (unsure or all(row.key in uninformative for row in rows))
     return Look(
         district=first.district,
         pest=first.pest,

@@ -8,7 +8,7 @@ import numpy as np
 
 from rules import windows
 from rules.book import Pest, Rule
-from rules.looks import is_trap_reading
+from rules.looks import is_find, is_trap_reading
 from rules.records import Ask, Effort, Known, Look, Observation, Signal, Why
 from service.signals.evidence import of_observation, season_start, signal
 
@@ -31,7 +31,7 @@ def evaluate(known: Known, rule: Rule, pest: Pest) -> list[Signal]:
 
 
 def _is_find(row: Observation, pest: Pest) -> bool:
-    return row.pest == pest.id and row.present and row.confidence != "unsure" and not is_trap_reading(row)
+    return row.pest == pest.id and is_find(row) and not is_trap_reading(row)
 
 
 def _signal(known: Known, rule: Rule, pest: Pest, first: Sequence[Observation]) -> Signal:

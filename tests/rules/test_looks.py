@@ -103,6 +103,27 @@ def test_a_look_where_the_pest_hides_says_nothing_unless_it_found():
     assert only(found, uninformative={"csv:0"}).effort is Effort.COMPLETE
 
 
+@pytest.mark.parametrize("other", [None, False], ids=["alone", "beside an absence"])
+def test_a_look_that_was_unsure_is_no_find_and_no_absence(other):
+    rows = [an_observation("csv:1", confidence="unsure", spot_counts=(1.0,) * 5)]
+    rows += [] if other is None else [an_observation("csv:2", present=other, spot_counts=(0.0,) * 5)]
+    assert (only(rows).found, only(rows).effort) == (False, Effort.UNINFORMATIVE)
+
+
+@pytest.mark.parametrize("confidence", [None, "fairly sure", "sure"])
+def test_a_sure_find_beside_an_unsure_one_is_a_find(confidence):
+    rows = [
+        an_observation("csv:1", confidence="unsure", spot_counts=(1.0,) * 5),
+        an_observation("csv:2", confidence=confidence, spot_counts=(1.0,) * 5),
+    ]
+    assert (only(rows).found, only(rows).effort) == (True, Effort.COMPLETE)
+
+
+def test_an_absence_that_was_unsure_stays_a_look():
+    row = an_observation("csv:1", present=False, confidence="unsure", spot_counts=(0.0,) * 5)
+    assert (only([row]).found, only([row]).effort) == (False, Effort.COMPLETE)
+
+
 def test_order_of_rows_changes_nothing():
     rows = [
         an_observation("csv:1", paddock="p1", crop="canola", why=Why.LOT),
