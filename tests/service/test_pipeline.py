@@ -3,27 +3,27 @@
 import re
 import urllib.request
 from dataclasses import replace
-from datetime import date, datetime, timedelta
+from datetime import datetime, timedelta
 from email import message_from_bytes, policy
 from pathlib import Path
 from typing import Any
 
 import pytest
-from sqlalchemy import select, text, update
+from sqlalchemy import text
 
-from rules.records import Observation, Paddock, Reportable, StationDay
+from rules.records import Observation, Paddock, StationDay
 from service import mailing, pipeline
 from service import settings as settings_file
 from service.clock import SetClock
-from service.errors import BadInput, NotFound, Refused, UnsafeText, WrongState
+from service.errors import NotFound, Refused, UnsafeText, WrongState
 from service.settings import MailSettings, Settings, WebSettings
-from service.store import audit, editions, jobs, network, observations, outbox, reportables
+from service.store import audit, editions, jobs, network, observations, outbox
 from service.store import weather as weather_store
 from service.store.base import Store
 from service.tokens import Tokens
 from service.web.app import make_app
 from tests import small_network
-from tests.builders import FOUNDED, a_district, a_subscriber
+from tests.builders import a_subscriber
 from tests.service.web.site import running
 
 ID = "north-2026-W20"
@@ -348,128 +348,3 @@ def test_a_name_that_came_after_the_draft_stops_the_signing_too(
         network.save_paddocks(c, [replace(small_network.paddocks()[0], name="Fulmar Rise")], clock.now())
     with pytest.raises(UnsafeText, match="Fulmar Rise"):
         pipeline.sign(full, settings, ID, by="ivy", clock=clock, note="Fulmar Rise was crawling on Monday")
-
-
-# --- two at once, and a program that changed between ------------------------------------------------
-
-
-def test_what_is_held_while_it_is_being_signed_stops_the_signing(
-    full: Store, settings: Settings, clock: SetClock
-) -> None:
-    """A hold that came too late for the digests must not be on record beside digests that say the thing."""
-    pipeline.draft(full, "north", clock=clock)
-    listed = pipeline.show(full, ID)["statements"]
-    hatch = next(each["statement"] for each in listed if "hatch needs" in each["says"])
-
-    def meanwhile(done: int, total: int | None, what: str) -> None:
-        if done == total:
-            pipeline.hold(full, ID, hatch, by="ivy", reason="the buoys disagree", clock=clock)
-
-    with pytest.raises(WrongState, match="someone else"):
-        pipeline.sign(full, settings, ID, by="ivy", clock=clock, progress=meanwhile)
-    with full.reading() as c:
-        assert editions.get(c, ID).state == "draft"
-        assert set(editions.held(c, ID)) == {hatch}
-    assert pipeline.sign(full, settings, ID, by="ivy", clock=clock)["held"] == 1
-
-
-def test_of_two_who_sign_with_other_notes_one_is_told_and_all_is_sent(
-    full: Store, settings: Settings, clock: SetClock, tmp_path: Path
-) -> None:
-    pipeline.draft(full, "north", clock=clock)
-
-    def meanwhile(done: int, total: int | None, what: str) -> None:
-        if done == total:
-            pipeline.sign(full, settings, ID, by="ivy", clock=clock, note="Fog on the north side.")
-
-    with pytest.raises(WrongState, match="someone else"):
-        pipeline.sign(full, settings, ID, by="ivy", clock=clock, note="Rain on the south side.", progress=meanwhile)
-    with pipeline.mail_server(tmp_path / "mail") as server:
-        mail = MailSettings(port=server.port, starttls="never")
-        assert pipeline.send(full, settings.model_copy(update={"mail": mail}), ID, clock=clock)["sent"] == READERS
-    assert all("Fog on" in _words(file.read_bytes()) for file in (tmp_path / "mail" / "new").iterdir())
-
-
-@pytest.mark.parametrize("begun", [False, True], ids=["signed", "half sent"])
-def test_another_version_than_the_one_that_signed_sends_nothing_and_fails_nothing(
-    full: Store, settings: Settings, clock: SetClock, begun: bool
-) -> None:
-    pipeline.draft(full, "north", clock=clock)
-    pipeline.sign(full, settings, ID, by="ivy", clock=clock)
-    with full.writing() as c:
-        other = editions.get(c, ID).hashes | {"templates": "of another version"}
-        c.execute(update(editions.edition).where(editions.edition.c.id == ID).values(hashes=other))
-        if begun:
-            editions.mark_sent(c, ID, by="ivy", at=clock.now())
-    with pytest.raises(WrongState, match=r"templates changed; nothing was sent"):
-        pipeline.send(full, settings, ID, clock=clock)
-    with full.reading() as c:
-        assert outbox.counts(c, ID)["queued"] == READERS
-        assert editions.get(c, ID).state == ("sent" if begun else "signed")
-
-
-@pytest.mark.parametrize("altered", [READERS, 1], ids=["all", "one"])
-def test_a_program_that_says_all_of_it_otherwise_sends_nothing(
-    full: Store, settings: Settings, clock: SetClock, tmp_path: Path, altered: int
-) -> None:
-    """One digest that was altered by itself fails alone; if all differ, it is the program, and they wait."""
-    pipeline.draft(full, "north", clock=clock)
-    pipeline.sign(full, settings, ID, by="ivy", clock=clock)
-    slip = editions.slip
-    with full.writing() as c:
-        readers = c.scalars(select(slip.c.subscriber).order_by(slip.c.subscriber)).all()[:altered]
-        c.execute(update(slip).where(slip.c.subscriber.in_(readers)).values(canonical_hash="of other words"))
-    with pipeline.mail_server(tmp_path / "mail") as server:
-        ours = settings.model_copy(update={"mail": MailSettings(port=server.port, starttls="never")})
-        if altered == READERS:
-            with pytest.raises(WrongState, match="what a digest says has changed; nothing was sent"):
-                pipeline.send(full, ours, ID, clock=clock)
-        else:
-            counts = pipeline.send(full, ours, ID, clock=clock)
-            assert (counts["sent"], counts["failed"]) == (READERS - 1, 1)
-    with full.reading() as c:
-        assert outbox.counts(c, ID)["queued"] == (READERS if altered == READERS else 0)
-
-
-# --- listed pests, by whatever door ------------------------------------------------------------------
-
-
-@pytest.mark.parametrize(
-    ("name", "text"),
-    [
-        ("notes.txt", "ghost beetle by the silo\n"),
-        ("ghost beetle.jpg", "\x00\x01"),
-        ("odd.csv", "when,what\ntoday,ghost beetle\n"),
-        ("days.csv", "station,day,rain\nghost beetle,2026-05-10,x\n"),
-        ("readers.csv", "id,district,email,name,postcode,crops,consent\ns9,north,x,Ghost beetle,9001,,yes\n"),
-    ],
-)
-def test_whatever_can_not_be_taken_is_searched_first(
-    full: Store, clock: SetClock, tmp_path: Path, name: str, text: str
-) -> None:
-    _list_a_pest(full)
-    (tmp_path / name).write_text(text, encoding="utf-8")
-    with pytest.raises(BadInput) as caught:
-        pipeline.take(full, tmp_path / name, clock=clock)
-    assert str(caught.value).startswith("Please ring the invented plant health line now")
-    assert "beetle" not in f"{caught.value} {caught.value.refusals}"
-    with full.reading() as c:
-        assert len(reportables.cases(c, "north")) == 1
-
-
-def test_the_hotline_comes_before_all_else_and_the_files_name_not_at_all(
-    full: Store, clock: SetClock, tmp_path: Path
-) -> None:
-    _list_a_pest(full)
-    path = tmp_path / "ghost beetle.csv"
-    path.write_text("day,pest,status,reporter,paddock\n2026-05-10,rlem,present,ivy,p1\n", encoding="utf-8")
-    outcome = pipeline.take(full, path, clock=clock)
-    assert next(iter(outcome)) == "to_the_hotline"
-    assert outcome["to_the_hotline"].startswith("Please ring")
-    assert "ghost" not in str(outcome)
-
-
-def _list_a_pest(store: Store) -> None:
-    listed = (Reportable("ghost", ("ghost beetle",), date(2026, 1, 1)),)
-    with store.writing() as c:
-        network.save_district(c, replace(a_district(), reportables=listed), FOUNDED)
