@@ -5,6 +5,7 @@ Exit codes: 0 done, 1 refused input, 2 usage, 3 a service it needs did not answe
 """
 
 import json
+import signal
 import sys
 from collections.abc import Mapping, Sequence
 from contextlib import contextmanager
@@ -45,7 +46,8 @@ Outcome = Mapping[str, Any]
 
 
 def main(argv: Sequence[str] | None = None) -> None:
-    """The installed command."""
+    """The installed command. Being asked to end (SIGTERM) is taken as Ctrl-C is: what is under way is put back."""
+    signal.signal(signal.SIGTERM, signal.default_int_handler)
     app(args=None if argv is None else list(argv))
 
 

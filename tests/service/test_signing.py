@@ -11,26 +11,9 @@ from service.errors import WrongState
 from service.settings import MailSettings, Settings
 from service.store import editions, outbox
 from service.store.base import Store
-from tests import small_network
 
 ID = "north-2026-W20"
 READERS = 7
-
-
-@pytest.fixture
-def clock() -> SetClock:
-    return SetClock(small_network.CUT_OFF)
-
-
-@pytest.fixture
-def full(store: Store) -> Store:
-    small_network.fill(store)
-    return store
-
-
-@pytest.fixture
-def settings(tmp_path: Path) -> Settings:
-    return Settings(data_dir=str(tmp_path), keys_file=str(tmp_path / "keys"))
 
 
 def test_what_is_held_while_it_is_being_signed_stops_the_signing(
