@@ -35,7 +35,7 @@ def told_crops(signals: Sequence[Signal], known: Known, book: Book) -> dict[str,
     farms = farms_of(known)
     found: dict[str, Crops] = {}
     for signal in signals:
-        if signal.kind == "threshold":
+        if signal.kind == "threshold" and _was_compared(signal):
             crops = with_number(book.pests[signal.pest])
             if farms.blur(crops).district_hides:
                 found |= dict.fromkeys(_counted(signal, known), crops)
@@ -65,9 +65,15 @@ def _offers(signal: Signal, known: Known, book: Book, seen: View) -> Iterator[Of
     elif signal.kind == "threshold":
         exact = {**signal.figures, "paddock": signal.paddock}
         yield Offer(_statement(signal, "count", exact), day, paddock=signal.paddock)
-        yield from _counted_near(signal, day, known, book, seen)
+        if _was_compared(signal):
+            yield from _counted_near(signal, day, known, book, seen)
     elif seen.shown:
         yield from _first_seen(signal, day, known, seen)
+
+
+def _was_compared(signal: Signal) -> bool:
+    """Whether a count was set against the number. One that was not is answered to its owner, and no news to others."""
+    return bool(signal.figures["verdict"] != "count_by_spots")
 
 
 def _counted_near(signal: Signal, day: date, known: Known, book: Book, seen: View) -> Iterator[Offer]:

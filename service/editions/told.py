@@ -8,6 +8,7 @@ from service.editions import sentences as say
 
 ADVISER = "this is a reason to talk to your adviser, not a decision"
 NOT_SETTLED = "more samples may not settle it"
+BY_SPOTS = "One number can't be set against the number that matters: count again by spots."
 NO_NUMBER = "There is no agreed number for this crop, stage and unit."
 
 
@@ -70,6 +71,7 @@ def verdict(statement: Statement, relook_days: int) -> Sentence:
         "near": f"Near the number: {near}.",
         "below": f"Below the number on that day; count again within {relook_days} days.",
         "no_agreed_number": NO_NUMBER,
+        "count_by_spots": BY_SPOTS,
     }
     return Sentence(words[figures["verdict"]], origin(statement))
 
@@ -104,6 +106,8 @@ def _why_hatch(figures: Mapping[str, Any]) -> list[str]:
 
 
 def _why_count(figures: Mapping[str, Any]) -> list[str]:
+    if figures["verdict"] == "count_by_spots":
+        return ["How far a count may be off shows only where spots are counted one by one."]
     said = [f"Worked out from {say.how_many(figures['spots'], 'spot')} of your own count."]
     edge, middle = figures.get("edge_mean"), figures.get("middle_mean")
     if edge is not None and middle is not None:

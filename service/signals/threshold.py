@@ -1,9 +1,11 @@
 """A fresh count by spots, set against the number that matters for that crop, stage and unit.
 
 Only numbers with a source or of common practice are compared with; a count that can't be brought to the
-number's unit is not compared at all.
+number's unit is not compared at all. One number for a whole paddock has no interval: it is answered with
+*count by spots*, and never called.
 """
 
+from collections import defaultdict
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from datetime import timedelta
@@ -18,7 +20,7 @@ from service.signals.evidence import of_observation, of_paddock, signal
 
 @dataclass(frozen=True, slots=True)
 class Count:
-    """A row counted by spots, with the crop and stage it was made in and the row that told the stage."""
+    """A row with a count, with the crop and stage it was made in and the row that told the stage."""
 
     row: Observation
     paddock: Paddock
@@ -27,16 +29,26 @@ class Count:
     stage_row: Observation
 
 
+@dataclass(frozen=True, slots=True)
+class Measured:
+    """A count in the number's unit; one without spots has its mean alone."""
+
+    mean: float
+    interval: tuple[float, float] | None = None
+    spots: int | None = None
+    edge_mean: float | None = None
+    middle_mean: float | None = None
+
+
 def evaluate(known: Known, rule: Rule, pest: Pest) -> list[Signal]:
     """At most one signal a paddock, from its newest count; paddocks by id."""
-    newest = _newest_counts(known, rule, pest)
-    counts = (_placed(known, newest[id], known.paddocks[id]) for id in sorted(newest))
-    found = (_signal(known, rule, pest, count) for count in counts if count and _at_risk(rule, pest, count))
+    counts = _counts(known, rule, pest)
+    found = (_answer(known, rule, pest, counts[id]) for id in sorted(counts))
     return [each for each in found if each is not None]
 
 
-def _newest_counts(known: Known, rule: Rule, pest: Pest) -> dict[str, Observation]:
-    """The newest row of each paddock that was counted by spots, and surely this pest."""
+def _counts(known: Known, rule: Rule, pest: Pest) -> dict[str, list[Observation]]:
+    """The fresh rows of each paddock that were counted, and surely this pest; oldest first."""
     oldest = known.today - timedelta(days=rule.parameters["count_within_days"])
     rows = [
         row
@@ -44,11 +56,32 @@ def _newest_counts(known: Known, rule: Rule, pest: Pest) -> dict[str, Observatio
         if row.pest == pest.id
         and row.paddock in known.paddocks
         and oldest <= row.day <= known.today
-        and row.spot_counts
+        and (_by_spots(row) or row.count)
         and row.unit
         and row.confidence != "unsure"
     ]
-    return {str(row.paddock): row for row in sorted(rows, key=lambda row: (row.day, row.arrived_at, row.key))}
+    counts: dict[str, list[Observation]] = defaultdict(list)
+    for row in sorted(rows, key=lambda row: (row.day, row.arrived_at, row.key)):
+        counts[str(row.paddock)].append(row)
+    return counts
+
+
+def _by_spots(row: Observation) -> bool:
+    """Whether there are spots enough for an interval: one has no spread."""
+    return len(row.spot_counts) > 1
+
+
+def _answer(known: Known, rule: Rule, pest: Pest, rows: Sequence[Observation]) -> Signal | None:
+    """What the newest count by spots says; only where that is nothing, a later one may be asked for by spots."""
+    by_spots = [row for row in rows if _by_spots(row)]
+    said = _of_row(known, rule, pest, by_spots[-1]) if by_spots else None
+    later = [row for row in rows if not by_spots or row.day > by_spots[-1].day]
+    return _of_row(known, rule, pest, later[-1]) if said is None and later else said
+
+
+def _of_row(known: Known, rule: Rule, pest: Pest, row: Observation) -> Signal | None:
+    count = _placed(known, row, known.paddocks[str(row.paddock)])
+    return _signal(known, rule, pest, count) if count and _at_risk(rule, pest, count) else None
 
 
 def _placed(known: Known, row: Observation, paddock: Paddock) -> Count | None:
@@ -117,49 +150,58 @@ def _units_per_spot(row: Observation) -> float | None:
 
 def _signal(known: Known, rule: Rule, pest: Pest, count: Count) -> Signal | None:
     """What the count says, unless it can't be compared or lies below."""
-    row, number, units = count.row, _number(pest, count), _units_per_spot(count.row)
-    if number is None or units is None:
+    number = _number(pest, count)
+    measured = None if number is None else _measured(rule, count.row, number[1])
+    if number is None or measured is None:
         return None
-    threshold, factor = number
-    counted = thresholds.spot_interval(row.spot_counts, units / factor, confidence=rule.parameters["confidence"])
-    if counted is None:
+    threshold, _ = number
+    said = thresholds.compare(measured.mean, measured.interval, threshold.low, threshold.high, spots=measured.spots)
+    if said.verdict not in ("near", "at_or_above", "count_by_spots"):
         return None
-    interval = (counted.low, counted.high)
-    said = thresholds.compare(counted.mean, interval, threshold.low, threshold.high, spots=counted.spots)
-    if said.verdict not in ("near", "at_or_above"):
-        return None
-    apart = {f"{where}_mean": _mean_at(row, where, units / factor) for where in ("edge", "middle")}
     return signal(
         known,
         rule,
         Ask.COUNT,
         cells=[count.paddock.place.cell],
         paddock=count.paddock.id,
-        first_day=row.day,
-        last_day=row.day + timedelta(days=rule.parameters["count_within_days"]),
-        figures=_figures(count, threshold, counted, said) | apart,
+        first_day=count.row.day,
+        last_day=count.row.day + timedelta(days=rule.parameters["count_within_days"]),
+        figures=_figures(count, threshold, measured, said),
         evidence=_evidence(count),
     )
 
 
-def _figures(
-    count: Count, threshold: Threshold, counted: thresholds.SpotMean, said: thresholds.Comparison
-) -> dict[str, Any]:
+def _measured(rule: Rule, row: Observation, factor: float) -> Measured | None:
+    """The count in the number's unit; None where its spots can't be brought to it."""
+    if not _by_spots(row):
+        return Measured(float(row.count or 0) * factor)
+    units = _units_per_spot(row)
+    if units is None:
+        return None
+    found = thresholds.spot_interval(row.spot_counts, units / factor, confidence=rule.parameters["confidence"])
+    edge, middle = (_mean_at(row, where, units / factor) for where in ("edge", "middle"))
+    return None if found is None else Measured(found.mean, (found.low, found.high), found.spots, edge, middle)
+
+
+def _figures(count: Count, threshold: Threshold, measured: Measured, said: thresholds.Comparison) -> dict[str, Any]:
+    low, high = measured.interval or (None, None)
     return {
         "day": count.row.day.isoformat(),
-        "mean": round(counted.mean, 2),
-        "low": round(counted.low, 2),
-        "high": round(counted.high, 2),
+        "mean": round(measured.mean, 2),
+        "low": None if low is None else round(low, 2),
+        "high": None if high is None else round(high, 2),
         "unit": threshold.unit,
         "threshold_low": round(threshold.low, 2),
         "threshold_high": round(threshold.high, 2),
         "verdict": said.verdict,
-        "spots": counted.spots,
+        "spots": measured.spots,
         "more_spots": said.more_spots,
         "crop": count.crop,
         "stage": count.stage,
         "mark": threshold.mark,
         "source": threshold.source,
+        "edge_mean": measured.edge_mean,
+        "middle_mean": measured.middle_mean,
     }
 
 

@@ -37,6 +37,13 @@ def asks() -> SlipView:
     return cast.said(cast.edition(rows, signals, paddocks=cast.fields(p0=SOWN)))
 
 
+def one_number() -> SlipView:
+    """An own count that came without its spots."""
+    own = cast.look(0, True, stage=11, stage_scale="BBCH", spot_counts=())
+    bare = cast.threshold(0, "count_by_spots", rows=[own], figures={"low": None, "high": None, "spots": None})
+    return cast.said(cast.edition([*neighbours(), own], [bare], paddocks=cast.fields(p0=SOWN)))
+
+
 def no_ask() -> SlipView:
     """Looks near, and nothing that asks for one."""
     rows = [row for row in neighbours() if not row.present]
@@ -66,7 +73,8 @@ def before_emergence() -> SlipView:
 
 
 ALL: dict[str, Callable[[], SlipView]] = {
-    each.__name__: each for each in (asks, no_ask, nobody_looked, weather_missing, dressed_seed, before_emergence)
+    each.__name__: each
+    for each in (asks, one_number, no_ask, nobody_looked, weather_missing, dressed_seed, before_emergence)
 }
 
 if __name__ == "__main__":

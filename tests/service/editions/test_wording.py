@@ -51,6 +51,7 @@ def weeks() -> Iterator[SlipView]:
     counts = [
         cast.threshold(0, verdict, rows=[own]) for verdict in ("below", "near", "at_or_above", "no_agreed_number")
     ]
+    counts.append(cast.threshold(0, "count_by_spots", rows=[own], figures={"low": None, "high": None, "spots": None}))
     news = [[], [cast.hatch()], found, *([count] for count in counts), [cast.hatch(), *found, counts[2]]]
     crops: list[dict[str, Any]] = [
         {"crop": crop, **more}

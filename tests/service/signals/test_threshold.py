@@ -149,13 +149,66 @@ def test_the_row_spacing_may_be_the_paddocks() -> None:
     assert signals(worms(), paddocks=[field])[0].figures["mean"] == 12.0
 
 
+# --- one number without its spots ------------------------------------------------------------------
+
+
+@pytest.mark.parametrize("spots", [(), (400.0,)], ids=["no spots", "one spot has no spread"])
+@pytest.mark.parametrize("mean", [0.1, 10.0, 40.0])
+def test_one_number_is_never_called(spots: tuple[float, ...], mean: float) -> None:
+    """It has no interval: whether it lies below, near or above 10 a plant, the answer is to count by spots."""
+    (found,) = signals(a_count(spots=spots, count=mean))
+    assert (found.figures["verdict"], found.ask, found.paddock) == ("count_by_spots", Ask.COUNT, "p1")
+    assert (found.figures["mean"], found.figures["threshold_low"], found.figures["threshold_high"]) == (mean, 10, 10)
+    said = {"low", "high", "spots", "more_spots", "edge_mean", "middle_mean"}
+    assert {name: found.figures[name] for name in said} == dict.fromkeys(said)
+    assert [each.id for each in found.evidence] == ["csv:1", "p1"]
+
+
+def test_one_number_is_brought_to_the_numbers_unit() -> None:
+    (found,) = signals(worms(spots=(), row_spacing_m=0.25))
+    # by hand: 1.5 larvae in 0.5 m × 0.25 m are 12 in a square metre
+    assert (found.figures["mean"], found.figures["unit"]) == (12.0, "per_m2")
+
+
+@pytest.mark.parametrize(
+    ("why", "change"),
+    [
+        ("not surely this pest", {"confidence": "unsure"}),
+        ("eight days old", {"day": TODAY - 8 * DAY}),
+        ("no number at two true leaves", {"stage": 12}),
+        ("holes in leaves are not mites", {"unit": "holes_per_leaf"}),
+        ("stage unknown", {"stage": None}),
+    ],
+)
+def test_one_number_is_answered_only_where_spots_would_be(why: str, change: dict[str, Any]) -> None:
+    assert signals(a_count(spots=(), count=40.0, **change)) == [], why
+
+
+@pytest.mark.parametrize(
+    ("spots", "days_later", "verdict"),
+    [
+        (FEW, 1, "count_by_spots"),  # the older count was below; what grew since has no interval
+        (FEW, 0, None),
+        (FEW, -1, None),
+        (MANY, 1, "at_or_above"),  # one number takes nothing away from what the spots said
+        (MANY, 0, "at_or_above"),
+        (ABOUT, 1, "near"),
+    ],
+)
+def test_one_number_beside_a_count_by_spots(spots: Sequence[float], days_later: int, verdict: str | None) -> None:
+    by_spots = a_count("csv:1", spots, day=TODAY - 3 * DAY)
+    bare = a_count("csv:2", (), count=40.0, day=TODAY - (3 - days_later) * DAY)
+    assert [each.figures["verdict"] for each in signals(by_spots, bare)] == ([verdict] if verdict else [])
+
+
 # --- what is never compared ----------------------------------------------------------------------
 
 
 @pytest.mark.parametrize(
     ("why", "row"),
     [
-        ("no spots: unsized", a_count(spots=(), count=40.0)),
+        ("not a count at all", a_count(spots=(), count=None)),
+        ("nothing counted, so nothing to count again", a_count(spots=(), count=0.0)),
         ("not surely this pest", a_count(confidence="unsure")),
         ("eight days old", a_count(day=TODAY - 8 * DAY)),
         ("no number at two true leaves", a_count(stage=12)),
