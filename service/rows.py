@@ -20,6 +20,7 @@ from pathlib import Path
 from rules.records import Refusal
 from service.errors import BadInput
 
+_LONGEST_HEADER = 65_536  # bytes in which the first line is looked for by itself
 LONGEST = 500  # characters in one cell; a name or note of this kind is never longer
 ID = re.compile(r"[A-Za-z0-9][A-Za-z0-9._-]{0,63}")
 EMAIL = re.compile(
@@ -171,10 +172,19 @@ def _iso_day(value: str) -> date:
 
 def text_of(path: Path) -> str:
     """The text of a file, whichever of the encodings above it is in."""
+    return decoded(path, bytes_of(path))
+
+
+def bytes_of(path: Path) -> bytes:
+    """A file as it is."""
     try:
-        raw = path.read_bytes()
+        return path.read_bytes()
     except OSError as error:
         raise BadInput(f"{path} can't be read: {error.strerror}. Check its name and that you may read it") from error
+
+
+def decoded(path: Path, raw: bytes) -> str:
+    """What a file's bytes say; BadInput where they are no text."""
     wide = raw.startswith((codecs.BOM_UTF16_LE, codecs.BOM_UTF16_BE))
     try:
         text = raw.decode("utf-16" if wide else "utf-8-sig")
@@ -190,9 +200,18 @@ def text_of(path: Path) -> str:
 
 def header_of(path: Path) -> list[str]:
     """The column names of a table, in lower case and without spaces around them."""
-    text = text_of(path)
-    first = text if '"' in text else text[: text.find("\n") + 1 or None]  # a large file is not copied for one line
-    return _names(next(_records(path, first), []))
+    text = _plain_first_line(path) or text_of(path)
+    return _names(next(_records(path, text), []))
+
+
+def _plain_first_line(path: Path) -> str | None:
+    """The first line of a file, without reading the rest, if it is ASCII and surely the whole first record."""
+    if not path.is_file():
+        return None
+    with path.open("rb") as file:
+        line = file.readline(_LONGEST_HEADER)
+    plain = line.isascii() and line.endswith(b"\n") and not re.search(rb'["\x00]|\r(?!\n\Z)', line)
+    return line.decode() if plain else None
 
 
 def read(path: Path, required: Sequence[str], optional: Sequence[str] = ()) -> list[Row]:

@@ -75,25 +75,26 @@ class Builder:
         said = bodies(found | {"why": why}, size)
         keys = self._keys(values, said)
         joined = b"".join(digests(said, keys))
-        found["key"] = pa.array(keys, pa.string())
+        found["key"] = keys
         found["digest"] = pa.FixedSizeBinaryArray.from_buffers(pa.binary(SIZE), size, [None, pa.py_buffer(joined)])
         found["cell"] = pa.array(cells_of(*(found[name].to_numpy() for name in ("latitude", "longitude"))))
         found |= self._arrivals(found, values, size)
         kept = {name: column for name, column in found.items() if column.null_count < size}
         return pa.table(kept | {"row": pa.array(numbers)})
 
-    def _keys(self, values: Mapping[str, pa.Array], said: Sequence[bytes]) -> list[str]:
+    def _keys(self, values: Mapping[str, pa.Array], said: pa.Array) -> pa.Array:
         size = len(said)
         ids = values.get("record_id", pa.nulls(size, pa.string()))
         sources = pc.fill_null(values.get("source", pa.nulls(size, pa.string())), self.source)
-        keys: list[str] = (
-            pc.binary_join_element_wise(sources, pc.fill_null(ids, ""), ":").to_numpy(zero_copy_only=False).tolist()
-        )
+        keys = pc.binary_join_element_wise(sources, pc.fill_null(ids, ""), ":")
+        if not ids.null_count:
+            return keys
+        named: list[str] = keys.to_pylist()
         for at in np.flatnonzero(pc.is_null(ids).to_numpy(zero_copy_only=False)).tolist():
-            name = keys[at].encode() + sha256(said[at]).digest()[:SIZE]
+            name = named[at].encode() + sha256(said[at].as_py()).digest()[:SIZE]
             self.seen[name] += 1
-            keys[at] += f"#{name[-SIZE:].hex()}.{self.seen[name]}"
-        return keys
+            named[at] += f"#{name[-SIZE:].hex()}.{self.seen[name]}"
+        return pa.array(named, pa.string())
 
     def _arrivals(
         self, found: Mapping[str, pa.Array], values: Mapping[str, pa.Array], size: int

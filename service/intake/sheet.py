@@ -48,12 +48,8 @@ class Sheet:
 
 def read(path: Path) -> Sheet:
     """Read a file; BadInput where it is no table of observations."""
-    text = rows.text_of(path)
-    quoted = '"' in text
-    first = text if quoted else text[: text.find("\n") + 1 or None]  # not a copy of everything for one line
-    header = [cell.strip().lower() for cell in next(_records(path, first), [])]
-    _check_header(path, header)
-    sheet = _irregular(path, text, header) if quoted else _regular(text, header) or _irregular(path, text, header)
+    raw = rows.bytes_of(path)
+    sheet = _regular(path, raw) or _irregular(path, rows.decoded(path, raw))
     if not sheet.misfits and not _anything(sheet.columns):
         raise BadInput(f"{path.name} has a header and no rows; add at least one")
     return sheet
@@ -65,13 +61,15 @@ def _anything(table: pa.Table) -> bool:
     return any(pc.any(pc.not_equal(chunk, "")).as_py() for chunk in chunks)
 
 
-def _regular(text: str, header: list[str]) -> Sheet | None:
-    """The quick way, for files without quotation marks; None where some line is not a row."""
-    if "\r" in text and text.count("\r") != text.count("\r\n"):
+def _regular(path: Path, raw: bytes) -> Sheet | None:
+    """The quick way, for UTF-8 without quotation marks; None where some line is not a row."""
+    first = raw[: raw.find(b"\n") + 1 or None]
+    if b'"' in raw or b"\x00" in raw or raw.count(b"\r") != raw.count(b"\r\n") or not _is_utf8(first):
         return None
+    header = _header(path, first.decode("utf-8-sig"))
     try:
         table = arrow_csv.read_csv(
-            pa.BufferReader(text.encode()),
+            pa.BufferReader(raw),
             read_options=arrow_csv.ReadOptions(column_names=header, skip_rows=1, block_size=_BLOCK),
             parse_options=arrow_csv.ParseOptions(quote_char=False, ignore_empty_lines=False),
             convert_options=arrow_csv.ConvertOptions(
@@ -83,8 +81,18 @@ def _regular(text: str, header: list[str]) -> Sheet | None:
     return Sheet(header, table, np.arange(2, table.num_rows + 2), [])
 
 
-def _irregular(path: Path, text: str, header: list[str]) -> Sheet:
+def _is_utf8(raw: bytes) -> bool:
+    try:
+        raw.decode()
+    except UnicodeDecodeError:
+        return False
+    return True
+
+
+def _irregular(path: Path, text: str) -> Sheet:
     """The careful way, record by record."""
+    first = text if '"' in text else text[: text.find("\n") + 1 or None]  # not a copy of everything for one line
+    header = _header(path, first)
     fitting: list[list[str]] = []
     numbers: list[int] = []
     misfits: list[Misfit] = []
@@ -97,6 +105,13 @@ def _irregular(path: Path, text: str, header: list[str]) -> Sheet:
     columns = zip(*fitting, strict=True) if fitting else [()] * len(header)
     table = pa.table({name: pa.array(column, pa.string()) for name, column in zip(header, columns, strict=True)})
     return Sheet(header, table, np.array(numbers, np.int64), misfits)
+
+
+def _header(path: Path, text: str) -> list[str]:
+    """The names in the first record; BadInput where they are not those of a table of observations."""
+    header = [cell.strip().lower() for cell in next(_records(path, text), [])]
+    _check_header(path, header)
+    return header
 
 
 def _records(path: Path, text: str) -> Iterator[list[str]]:

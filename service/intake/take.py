@@ -25,6 +25,7 @@ from service.intake.checking import Progress
 from service.intake.consistency import Mask
 from service.intake.frame import Frame, Names, frame_of
 from service.intake.incoming import Builder
+from service.intake.order import ascending
 from service.intake.refusals import RowsRefused
 from service.intake.sheet import Sheet
 from service.store import observation_load, reportables
@@ -197,7 +198,7 @@ def _by_key(tables: list[pa.Table], builder: Builder) -> pa.Table:
     if not tables:
         return pa.table({"key": pa.array([], pa.string())})
     table = builder.join(tables).combine_chunks()
-    return table.take(pc.sort_indices(table["key"])).combine_chunks()
+    return table.take(pa.array(ascending(table["key"].combine_chunks())))
 
 
 def _once(table: pa.Table, taking: _Taking) -> tuple[pa.Table, int]:

@@ -6,7 +6,7 @@ version, are no part of it.
 """
 
 import struct
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from datetime import date
 from hashlib import sha256
 from math import nan
@@ -84,21 +84,29 @@ def _text(value: Any) -> str:
     return value.isoformat() if isinstance(value, date) else str(value)
 
 
-def bodies(columns: Mapping[str, pa.Array], rows: int) -> list[bytes]:
+def bodies(columns: Mapping[str, pa.Array], rows: int) -> pa.Array:
     """What each of some rows says, without its key: the bytes that its digest is taken of.
 
     `columns` hold what is given, under the names above; a column that is not there was not given.
     """
+    parts: list[Any] = [_packed(columns, rows)]
+    fixed = b""
+    for at, name in enumerate(TEXTS):  # runs of columns that are not there cost nothing
+        fixed += _BETWEEN.encode() if at else b""
+        if name in columns:
+            parts += [pa.scalar(fixed), columns[name].cast(pa.string()).cast(pa.binary())]
+            fixed = b""
+    return pc.binary_join_element_wise(*parts, fixed, b"", null_handling="replace", null_replacement=b"")
+
+
+def _packed(columns: Mapping[str, pa.Array], rows: int) -> pa.Array:
+    """The numbers of each row, one after the other."""
     packed = np.full((rows, len(NUMBERS)), nan)
     for at, name in enumerate(NUMBERS):
         if name in columns:
             packed[:, at] = _doubles(columns[name])
-    width = packed.shape[1] * 8
-    numbers = packed.tobytes()
-    texts = _joined([columns.get(name) for name in TEXTS], rows)
-    return [
-        numbers[start : start + width] + text for start, text in zip(range(0, rows * width, width), texts, strict=True)
-    ]
+    ends = np.arange(rows + 1, dtype=np.int32) * (len(NUMBERS) * packed.itemsize)
+    return pa.BinaryArray.from_buffers(pa.binary(), rows, [None, pa.py_buffer(ends), pa.py_buffer(packed)])
 
 
 def _doubles(column: pa.Array) -> npt.NDArray[np.float64]:
@@ -108,20 +116,8 @@ def _doubles(column: pa.Array) -> npt.NDArray[np.float64]:
     return found
 
 
-def _joined(columns: list[pa.Array | None], rows: int) -> list[bytes]:
-    """The columns beside each other as text; runs of columns that are not there cost nothing."""
-    parts: list[Any] = []
-    fixed = ""
-    for at, column in enumerate(columns):
-        fixed += _BETWEEN if at else ""
-        if column is not None:
-            parts += [pa.scalar(fixed), column.cast(pa.string())]
-            fixed = ""
-    joined = pc.binary_join_element_wise(*parts, fixed, "", null_handling="replace", null_replacement="")
-    found: list[bytes] = joined.cast(pa.binary()).to_numpy(zero_copy_only=False).tolist()
-    return found
-
-
-def digests(bodies: list[bytes], keys: list[str]) -> list[bytes]:
+def digests(bodies: pa.Array, keys: Sequence[str] | pa.Array) -> list[bytes]:
     """The digests of rows from their bodies and keys."""
-    return [sha256(body + b"\x1f" + key.encode()).digest()[:SIZE] for body, key in zip(bodies, keys, strict=True)]
+    keyed = pa.array(keys, pa.string()).cast(pa.binary())
+    said = pc.binary_join_element_wise(bodies, keyed, _BETWEEN.encode())
+    return [sha256(each).digest()[:SIZE] for each in said.to_numpy(zero_copy_only=False).tolist()]

@@ -33,8 +33,8 @@ def test_regular_files_read_alike_both_ways(
     tmp_path_factory: pytest.TempPathFactory, rows: list[list[str]], end: str
 ) -> None:
     text = end.join(",".join(row) for row in [HEADER, *(["x", *row[1:]] for row in rows)]) + end
-    quick = sheet._regular(text, HEADER)
-    careful = sheet._irregular(Path("observations.csv"), text, HEADER)
+    quick = sheet._regular(Path("observations.csv"), text.encode())
+    careful = sheet._irregular(Path("observations.csv"), text)
     assert quick is not None
     _same(quick, careful)
     _same(sheet.read(_file(tmp_path_factory.mktemp("sheet"), text)), careful)
