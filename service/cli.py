@@ -32,6 +32,7 @@ app = typer.Typer(
     help="From paddock observations and local weather to a signed weekly digest for each grower.",
     no_args_is_help=True,
     pretty_exceptions_enable=False,
+    add_completion=False,
     context_settings={"help_option_names": ["-h", "--help"]},
 )
 edition = typer.Typer(no_args_is_help=True, help="Draft, review, sign and send a week's digest.")
