@@ -21,6 +21,7 @@ from rules.records import Refusal
 from service.intake import columns, csv_file
 from service.intake.consistency import Mask
 from service.intake.incoming import Builder
+from service.intake.memory import for_many_rows
 from service.intake.sheet import Sheet
 
 Progress = Callable[[int, int | None, str], None]  # how many are done, of how many, what is done
@@ -44,7 +45,7 @@ def check(part: Part, helper: "Helper | None" = None, progress: Progress | None 
     """The good rows as the store keeps them, block by block, and what is wrong with the others."""
     if helper is None or not _can_be_halved(part.sheet):
         return _check(part, progress)
-    here = len(part.wanted) // 2
+    here = len(part.wanted) * 11 // 20  # the other process has to be told first, and to answer
     rest = _slice(part, here, None)
     helper.give(rest)
     tables, refused = _check(_slice(part, 0, here), progress)
@@ -137,5 +138,8 @@ def helper_for(path: Path) -> Iterator[Helper | None]:
 
 def answer() -> None:
     """What the other process does."""
-    part: Part = pickle.load(sys.stdin.buffer)
-    pickle.dump(_check(part), sys.stdout.buffer, protocol=5)
+    with for_many_rows():
+        part: Part = pickle.load(sys.stdin.buffer)
+        pickle.dump(_check(part), sys.stdout.buffer, protocol=5)
+    sys.stdout.flush()
+    os._exit(0)  # somebody waits for the end, and nothing is left to tidy up

@@ -55,6 +55,8 @@ AS_GIVEN = (
     "note",
 )
 
+CODED = ("district", "pest", "reporter", "paddock", "postcode", "crop", "unit", "confidence")  # few different texts
+
 
 @dataclass(slots=True)
 class Builder:
@@ -79,7 +81,7 @@ class Builder:
         found["digest"] = pa.FixedSizeBinaryArray.from_buffers(pa.binary(SIZE), size, [None, pa.py_buffer(joined)])
         found["cell"] = pa.array(cells_of(*(found[name].to_numpy() for name in ("latitude", "longitude"))))
         found |= self._arrivals(found, values, size)
-        kept = {name: column for name, column in found.items() if column.null_count < size}
+        kept = {name: _coded(name, column) for name, column in found.items() if column.null_count < size}
         return pa.table(kept | {"row": pa.array(numbers)})
 
     def _keys(self, values: Mapping[str, pa.Array], said: pa.Array) -> pa.Array:
@@ -113,7 +115,7 @@ class Builder:
 
     def join(self, blocks: Sequence[pa.Table]) -> pa.Table:
         """The blocks as one table; where some give a column and others don't, with what is usual in it."""
-        whole = pa.concat_tables(blocks, promote_options="default")
+        whole = pa.concat_tables(blocks, promote_options="default").unify_dictionaries()
         for name, value in self.constants(()).items():
             if name in whole.column_names and whole[name].null_count:
                 at = whole.column_names.index(name)
@@ -132,3 +134,8 @@ class Builder:
             "arrival_assumed": False,
         }
         return {name: value for name, value in same.items() if name not in names}
+
+
+def _coded(name: str, column: pa.Array) -> pa.Array:
+    """A column of few different texts as their numbers: less to hand over, to put in order and to insert."""
+    return column.dictionary_encode() if name in CODED else column

@@ -64,7 +64,8 @@ def _anything(table: pa.Table) -> bool:
 def _regular(path: Path, raw: bytes) -> Sheet | None:
     """The quick way, for UTF-8 without quotation marks; None where some line is not a row."""
     first = raw[: raw.find(b"\n") + 1 or None]
-    if b'"' in raw or b"\x00" in raw or raw.count(b"\r") != raw.count(b"\r\n") or not _is_utf8(first):
+    lone = b"\r" in raw and raw.count(b"\r") != raw.count(b"\r\n")
+    if lone or b'"' in raw or b"\x00" in raw or not _is_utf8(first):
         return None
     header = _header(path, first.decode("utf-8-sig"))
     try:

@@ -25,6 +25,7 @@ from service.intake.checking import Progress
 from service.intake.consistency import Mask
 from service.intake.frame import Frame, Names, frame_of
 from service.intake.incoming import Builder
+from service.intake.memory import for_many_rows
 from service.intake.order import ascending
 from service.intake.refusals import RowsRefused
 from service.intake.sheet import Sheet
@@ -33,6 +34,7 @@ from service.store.base import Store, micros
 from service.store.reportables import Case
 
 
+@for_many_rows()
 def take_observations(
     store: Store,
     path: Path,

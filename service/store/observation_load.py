@@ -22,6 +22,7 @@ from service.store.observations import observation
 
 _TOGETHER = 50  # rows in one INSERT of SQLite: half the time of one each
 _BATCH = 65_536  # rows turned into the store's own form at a time
+_SOME = 1_000  # texts that show if a column holds few different ones
 _CACHE_KIB = 262_144  # pages kept while loading; the index on (district, day) is met in no order
 
 
@@ -57,7 +58,7 @@ WHERE NOT EXISTS (SELECT 1 FROM observation AS newer WHERE newer.key = held.key 
 
 
 def load(c: Connection, table: pa.Table, constants: dict[str, Any]) -> None:
-    """Insert rows in the order they are in. `constants` are the columns that are equal in all of them."""
+    """Insert rows, in ascending order of their keys. `constants` are the columns that are equal in all of them."""
     if table.num_rows:
         _insert(c, "observation", table, constants)
 
@@ -76,12 +77,22 @@ def _insert_sqlite(c: Connection, into: str, table: pa.Table, constants: dict[st
     c.exec_driver_sql(f"PRAGMA cache_size=-{_CACHE_KIB}")
     many, one = (_sql(into, table.column_names, constants, rows) for rows in (_TOGETHER, 1))
     for batch in table.to_batches(max_chunksize=_BATCH):
+        batch = _by_day(batch)
         flat = tuple(chain.from_iterable(zip(*map(_objects, batch.columns), strict=True)))
         width = batch.num_columns
         whole = batch.num_rows // _TOGETHER * _TOGETHER * width
         for sql, pieces in ((many, _pieces(flat[:whole], _TOGETHER * width)), (one, _pieces(flat[whole:], width))):
             if pieces:
                 c.exec_driver_sql(sql, pieces)
+
+
+def _by_day(batch: pa.RecordBatch) -> pa.RecordBatch:
+    """The rows of a batch by district and day, as the index on them is; their keys stay near each other."""
+    if "day" not in batch.schema.names:
+        return batch
+    districts = batch["district"].dictionary_encode().indices.to_numpy().astype(np.int64)
+    days = batch["day"].cast(pa.int32()).to_numpy()
+    return batch.take(pa.array(np.argsort((districts << 32) + days)))
 
 
 def _sql(into: str, names: Sequence[str], constants: dict[str, Any], rows: int) -> str:
@@ -105,8 +116,10 @@ def _objects(column: pa.Array) -> list[Any]:
         column = column.cast(pa.string())
     if pa.types.is_boolean(column.type):
         column = column.cast(pa.int8())
-    if pa.types.is_string(column.type):
+    if pa.types.is_string(column.type) or pa.types.is_dictionary(column.type):
         return _texts(column)
+    if pa.types.is_fixed_size_binary(column.type):
+        return [*map(bytearray, column.to_numpy(zero_copy_only=False))]  # the driver looks for an adapter of bytes
     if column.null_count:
         return list(column.to_pylist())
     objects: list[Any] = column.to_numpy(zero_copy_only=False).tolist()
@@ -114,9 +127,10 @@ def _objects(column: pa.Array) -> list[Any]:
 
 
 def _texts(column: pa.Array) -> list[Any]:
-    coded = column.dictionary_encode()
-    if len(coded.dictionary) > len(column) // 2:
+    some = column[:_SOME]
+    if len(some.unique()) > len(some) // 2:
         return list(column.to_numpy(zero_copy_only=False).tolist())
+    coded = column.dictionary_encode()
     values = np.array([None, *coded.dictionary.to_pylist()], object)
     return list(values[pc.fill_null(pc.add(coded.indices, 1), 0).to_numpy(zero_copy_only=False)].tolist())
 
@@ -151,6 +165,8 @@ _TYPE_OF = {bool: pa.bool_(), int: pa.int64(), str: pa.string()}
 
 
 def _plain(column: pa.Array) -> pa.Array:
+    if pa.types.is_dictionary(column.type):
+        return column.dictionary_decode()
     if not pa.types.is_fixed_size_binary(column.type):
         return column
     width = column.type.byte_width
