@@ -68,3 +68,19 @@ def test_a_file_that_is_not_there_or_empty_is_refused(tmp_path: Path) -> None:
         kind_of(tmp_path / "none.csv")
     with pytest.raises(BadInput, match="fits no kind"):
         kind_of(a_file(tmp_path, ""))
+
+
+@pytest.mark.parametrize(
+    "header",
+    [
+        'station,day,"tmin"\n',  # a quotation mark at the very end of the line
+        '"station","day\n",tmin\n',  # a name over two lines
+        "station,day,tmin\r\n",
+        "\ufeffstation,day,tmin\n",
+        "station,day,tmin",
+    ],
+)
+def test_a_header_is_read_whole_whatever_its_first_line_looks_like(tmp_path: Path, header: str) -> None:
+    path = tmp_path / "days.csv"
+    path.write_bytes(header.encode())
+    assert kind_of(path) == "station_days"
