@@ -41,6 +41,9 @@ def pytest_terminal_summary(terminalreporter: pytest.TerminalReporter) -> None:
     counts = _by_store(terminalreporter)
     said = ", ".join(f"{count} on {name}" for name, count in sorted(counts.items()))
     terminalreporter.write_line(f"tests that passed on each store: {said or 'no store was asked for'}")
+    for report in terminalreporter.stats.get("passed", ()):
+        if "/faults/" in report.nodeid and report.capstdout:  # what a kill test has to say is said, though it passed
+            terminalreporter.write(report.capstdout)
 
 
 @pytest.hookimpl(trylast=True)
