@@ -9,6 +9,7 @@ An origin is `statement:<hash>` (an edition's statement), `catalogue:<pest>.<fie
 `note` (the coordinator's), or `weather:<source>` (attribution).
 """
 
+from collections.abc import Iterable
 from dataclasses import dataclass, field
 from datetime import date, datetime
 
@@ -169,9 +170,26 @@ SHOW_LINK = "{{link:show}}"
 UNSUBSCRIBE_LINK = "{{link:unsubscribe}}"
 
 
+class Joined(str):
+    """A text that still knows the parts it was joined from, since other readers' texts share most of them."""
+
+    __slots__ = ("parts",)
+    parts: tuple[str, ...]
+
+    def __new__(cls, parts: Iterable[str]) -> "Joined":
+        kept = tuple(parts)
+        made = super().__new__(cls, "".join(kept))
+        made.parts = kept
+        return made
+
+    def __reduce__(self) -> tuple[type["Joined"], tuple[tuple[str, ...]]]:
+        """As its parts, for copies and for other processes."""
+        return Joined, (self.parts,)
+
+
 @dataclass(frozen=True, slots=True)
 class Rendered:
-    """A slip's canonical form: subject, text and HTML, with link placeholders."""
+    """A slip's canonical form: subject, text and HTML, with link placeholders; the bodies may be `Joined`."""
 
     subject: str
     text: str

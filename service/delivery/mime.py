@@ -6,22 +6,23 @@ but ASCII is written, except for an address that itself is not ASCII (RFC 6532, 
 """
 
 import base64
-import binascii
 import hashlib
 import html
 import re
-from datetime import datetime
+from collections.abc import Sequence
+from datetime import datetime, timedelta
 from email.utils import format_datetime
+from functools import lru_cache
 
 from rules.slip import SHOW_LINK, UNSUBSCRIBE_LINK, Rendered
 from service.delivery.addresses import on_the_wire
+from service.delivery.bodies import HARD_LINE, MARK, body
 from service.errors import Refused
 
 _LINE = 78  # longest line that RFC 5322 section 2.1.1 asks for, without CRLF
-_HARD_LINE = 998  # longest that it allows
 _LONGEST_NAME = len("Subject: ")  # of a header with free text: its first word must stand on the first line
 _WORD_BYTES = 42  # UTF-8 bytes in one encoded word, 68 characters with its frame: fits beside the longest name
-_PRINTABLE = bytes([*b"\t\r\n", *range(0x20, 0x7F)])
+_KEPT = 1_000  # subjects; many readers share theirs
 _ATOMS = re.compile(r"[A-Za-z0-9!#$%&'*+/=?^_`{|}~ -]+")
 _ONE_TOKEN = re.compile(r"[!-~]+")
 
@@ -60,10 +61,10 @@ def build(
     """
     links = {SHOW_LINK: _checked(show_url, "link"), UNSUBSCRIBE_LINK: _checked(unsubscribe_url, "link")}
     headers = [
-        _phrase("From", sender_name, on_the_wire(sender)),
+        _phrase("From", sender_name, sender),
         f"To: {on_the_wire(recipient)}",
         _unstructured("Subject", rendered.subject),
-        f"Date: {format_datetime(date)}",
+        f"Date: {_stamp(date.replace(microsecond=0), date.utcoffset())}",
         f"Message-ID: {_bracketed(message_id)}",
         f"List-Id: {_bracketed(list_id)}",
         _folded("List-Unsubscribe", f"<{unsubscribe_url}>"),
@@ -71,12 +72,11 @@ def build(
         "Auto-Submitted: auto-generated",
         "MIME-Version: 1.0",
     ]
-    page = {placeholder: html.escape(url, quote=True) for placeholder, url in links.items()}
-    parts = [_part("plain", _linked(rendered.text, links))]
+    parts = [body("plain", rendered.text, {name.encode(): url.encode() for name, url in links.items()})]
     if rendered.html:
-        parts.append(_part("html", _linked(rendered.html, page)))
-    body = _joined(parts, message_id)
-    return "\r\n".join(headers).encode() + b"\r\n" + body
+        page = {name.encode(): html.escape(url, quote=True).encode() for name, url in links.items()}
+        parts.append(body("html", rendered.html, page))
+    return b"".join(["\r\n".join(headers).encode(), b"\r\n", *_joined(parts, message_id)])
 
 
 def content_hash(data: bytes) -> str:
@@ -84,60 +84,27 @@ def content_hash(data: bytes) -> str:
     return hashlib.sha256(data).hexdigest()
 
 
-# --- bodies ------------------------------------------------------------------------------------
-
-
-def _joined(parts: list[bytes], message_id: str) -> bytes:
+def _joined(parts: Sequence[list[bytes]], message_id: str) -> list[bytes]:
     """One part as it is, or alternatives with the fullest last (RFC 2046 section 5.1.4)."""
     if len(parts) == 1:
         return parts[0]
-    mark = _boundary(parts, message_id)
-    head = b'Content-Type: multipart/alternative;\r\n boundary="' + mark + b'"\r\n\r\n'
-    # The line end before a delimiter belongs to the delimiter, so each part keeps its own.
-    return head + b"".join(b"--" + mark + b"\r\n" + part + b"\r\n" for part in parts) + b"--" + mark + b"--\r\n"
-
-
-def _linked(text: str, links: dict[str, str]) -> str:
-    for placeholder, url in links.items():
-        text = text.replace(placeholder, url)
-    if "{{link:" in text:
-        raise Refused("a link placeholder is left over that no link belongs to")
-    return text
-
-
-def _part(subtype: str, text: str) -> bytes:
-    """A part with its own headers: as it is where it can travel so, else quoted-printable (RFC 2045)."""
-    if "\r" in text:
-        text = text.replace("\r\n", "\n").replace("\r", "\n")
-    data = text.replace("\n", "\r\n").encode()
-    if not data.endswith(b"\r\n"):
-        data += b"\r\n"
-    charset, encoding = b"us-ascii", b"7bit"
-    if not _travels_as_it_is(data):
-        charset, encoding = b"utf-8", b"quoted-printable"
-        data = binascii.b2a_qp(data, istext=True)
-    kind = b"Content-Type: text/" + subtype.encode() + b"; charset=" + charset
-    return kind + b"\r\nContent-Transfer-Encoding: " + encoding + b"\r\n\r\n" + data
-
-
-def _travels_as_it_is(data: bytes) -> bool:
-    """Printable ASCII, no line over 998, no space at the end of one (RFC 2045 sections 2.7 and 6.7)."""
-    if data.translate(None, _PRINTABLE) or b" \r\n" in data or b"\t\r\n" in data:
-        return False
-    return max(map(len, data.split(b"\n"))) <= _HARD_LINE + len(b"\r")
-
-
-def _boundary(parts: list[bytes], message_id: str) -> bytes:
-    """A line that none of the parts holds; '=_' can't occur in quoted-printable (RFC 2045 section 6.7)."""
-    mark = b"=_" + hashlib.sha256(message_id.encode()).hexdigest()[:32].encode()
-    while any(mark in part for part in parts):
-        mark += b"_"
-    return mark
+    mark = MARK + hashlib.sha256(message_id.encode()).hexdigest()[:32].encode()
+    made = [b'Content-Type: multipart/alternative;\r\n boundary="', mark, b'"\r\n\r\n']
+    for part in parts:  # the line end before a delimiter belongs to the delimiter, so each part keeps its own
+        made += [b"--", mark, b"\r\n", *part, b"\r\n"]
+    return [*made, b"--", mark, b"--\r\n"]
 
 
 # --- headers -----------------------------------------------------------------------------------
 
 
+@lru_cache(maxsize=16)
+def _stamp(moment: datetime, _offset: timedelta | None) -> str:
+    """A second as RFC 5322 writes it; messages come by the hundred in each. Equal moments may differ in zone."""
+    return format_datetime(moment)
+
+
+@lru_cache(maxsize=_KEPT)
 def _unstructured(name: str, text: str) -> str:
     """A header of free text: folded between words, or as encoded words (RFC 2047)."""
     text = _one_line(text)
@@ -145,9 +112,10 @@ def _unstructured(name: str, text: str) -> str:
     return _folded(name, text) if plain else _folded(name, _encoded_words(text))
 
 
+@lru_cache(maxsize=16)
 def _phrase(header: str, name: str, address: str) -> str:
     """A header of one address, with a name beside it that can't be read as anything else."""
-    name = _one_line(name)
+    name, address = _one_line(name), on_the_wire(address)
     if not name:
         return f"{header}: {address}"
     if not name.isascii() or "=?" in name or len(name) > _LINE // 2:
@@ -164,7 +132,7 @@ def _folded(name: str, text: str) -> str:
         if len(lines[-1]) + 1 + len(word) > _LINE:
             lines.append("")
         lines[-1] += " " + word
-    if any(len(line) > _HARD_LINE for line in lines):
+    if any(len(line) > HARD_LINE for line in lines):
         raise Refused(f"{name} holds a word that is too long for a line of mail")
     return "\r\n".join(lines)
 
@@ -184,6 +152,8 @@ def _encoded_words(text: str) -> str:
 
 def _one_line(text: str) -> str:
     """Free text without anything that ends a line or steers a terminal; runs of space become one."""
+    if text.isprintable():
+        return " ".join(text.split())
     return " ".join("".join(character if character.isprintable() else " " for character in text).split())
 
 
@@ -192,6 +162,6 @@ def _bracketed(token: str) -> str:
 
 
 def _checked(token: str, what: str) -> str:
-    if not _ONE_TOKEN.fullmatch(token) or "<" in token or ">" in token or len(token) > _HARD_LINE - 3:
+    if not _ONE_TOKEN.fullmatch(token) or "<" in token or ">" in token or len(token) > HARD_LINE - 3:
         raise Refused(f"this {what} can't stand in a mail header: {token[:80]!r}")
     return token

@@ -5,6 +5,7 @@ to one of them. Results come back in the order of the items, and only a few chun
 so memory stays flat however many readers there are.
 """
 
+import gc
 import os
 from collections import deque
 from collections.abc import Callable, Iterable, Iterator, Sequence
@@ -19,6 +20,7 @@ Made = TypeVar("Made")
 
 CHUNK = 64  # items that travel together
 AHEAD = 2  # chunks under way for each process
+RARELY = 50_000  # new objects before a process looks for cycles among them
 
 _here: tuple[Callable[[Any, Any], Any], Any]
 
@@ -64,6 +66,8 @@ class Composers(Generic[Shared, Item, Made]):
 def _begin(work: Callable[[Any, Any], Any], shared: Any) -> None:
     global _here
     _here = work, shared
+    gc.freeze()  # what is here stays; and what the work keeps of readers' digests holds no cycles
+    gc.set_threshold(RARELY)
 
 
 def _make(chunk: Sequence[Any]) -> list[Any]:

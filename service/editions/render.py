@@ -4,8 +4,8 @@ The canonical form is the same bytes for the same view, templates and `RENDERER`
 address. Links stand as placeholders and are put in at sending.
 
 Parts that many readers share (a card, the general cautions, the foot) are macros; `Renderer` keeps what a
-macro made of a value and uses it again for the next reader. With `keep=0` it is plain Jinja2, and gives the
-same bytes.
+macro made of a value, uses it again for the next reader, and hands the bodies on as the parts that they are
+joined from. With `keep=0` it is plain Jinja2, and gives the same bytes.
 """
 
 import hashlib
@@ -16,7 +16,7 @@ from importlib.resources.abc import Traversable
 
 from jinja2 import Environment, FunctionLoader, StrictUndefined, Template
 
-from rules.slip import SHOW_LINK, UNSUBSCRIBE_LINK, Rendered, Sentence, SlipView
+from rules.slip import SHOW_LINK, UNSUBSCRIBE_LINK, Joined, Rendered, Sentence, SlipView
 from service.shipped import shipped
 
 RENDERER = "1"  # raise it when the same view and templates would give other bytes
@@ -50,6 +50,8 @@ def joined(sentences: Iterable[Sentence]) -> str:
 
 def ascii_html(html: str) -> str:
     """HTML with every other character as a reference: it travels as it is, and no charset can garble it."""
+    if html.isascii():
+        return html
     return type(html)(html.encode("ascii", "xmlcharrefreplace").decode("ascii"))  # escaped stays marked as such
 
 
@@ -58,18 +60,19 @@ class Renderer:
 
     def __init__(self, keep: int = 10_000) -> None:
         inline = _inline_rules(_source("email/_inline.css"))
-        self._subject = _environment("txt", {}).get_template("email/digest/subject.txt")
+        self._subject = _subject(keep)
+        self._keep = keep
         self._text = _with_parts("txt", {}, keep)
         self._html = _with_parts("html", inline, keep)
         self._page = _environment("html", {}).get_template("web/digest.html")
 
     def render(self, view: SlipView) -> Rendered:
         """The canonical subject, text and HTML of one slip, with link placeholders."""
-        return Rendered(
-            subject=self._subject.render(view=view).strip(),
-            text=self._text.render(view=view),
-            html=ascii_html(self._html.render(view=view)),
-        )
+        if not self._keep:
+            html = ascii_html(self._html.render(view=view))
+            return Rendered(self._subject(view.subject), self._text.render(view=view), html)
+        text, html = Joined(_pieces(self._text, view)), Joined(map(ascii_html, _pieces(self._html, view)))
+        return Rendered(self._subject(view.subject), text, html)
 
     def page(self, view: SlipView) -> str:
         """The same digest as a page, what stands behind each card one tap away; its way out is a placeholder."""
@@ -128,6 +131,16 @@ def _environment(kind: str, inline: Mapping[str, str]) -> Environment:
     environment.filters |= {"tidy": tidy, "paragraphs": paragraphs, "joined": joined}
     environment.globals |= {"show_link": SHOW_LINK, "unsubscribe_link": UNSUBSCRIBE_LINK}
     return environment
+
+
+def _subject(keep: int) -> Callable[[Sentence], str]:
+    template = _environment("txt", {}).get_template("email/digest/subject.txt")
+    return lru_cache(maxsize=keep)(lambda subject: template.render(view={"subject": subject}).strip())
+
+
+def _pieces(body: Template, view: SlipView) -> Iterator[str]:
+    """What a body yields one after the other; it needs no globals, which Jinja2 would copy each time."""
+    return body.root_render_func(body.new_context({"view": view}, shared=True))
 
 
 def _with_parts(kind: str, inline: Mapping[str, str], keep: int) -> Template:

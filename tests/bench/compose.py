@@ -1,9 +1,10 @@
 """`compose`: digests of readers over 4,000 cells, as HTML, text and MIME on 2 cores, beside bare Jinja2.
 
-Ours is `Composers.each`, as delivery uses it: a reader's few values travel to a process that holds what the
-readers share, and the message's bytes come back; making the sentences is in the time. The anchor is the same
-templates in plain Jinja2, HTML and text without MIME, on one core, from sentences made beforehand. Each round
-is a new week, so that no round finds a card of the round before.
+Ours are `render.render` and `mime.build`, which sending calls for each mail, in the processes of `Composers`,
+which signing reads all digests with: a reader's few values travel to a process that holds what the readers
+share, and the message's bytes come back; making the sentences is in the time. The anchor is the same templates
+in plain Jinja2, HTML and text without MIME, on one core, from sentences made beforehand. Each round is a new
+week, so that no round finds a card of the round before.
 """
 
 import random
