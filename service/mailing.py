@@ -4,6 +4,7 @@ What is sent is what was signed: a digest that no longer renders to the bytes th
 """
 
 from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass
 from datetime import datetime, timedelta
 from functools import lru_cache
 
@@ -16,6 +17,7 @@ from service.delivery import mime
 from service.delivery.sender import Mail, Skip
 from service.editions import gate, render, wording
 from service.editions.compose import Composed
+from service.editions.many import Composers
 from service.errors import NotFound, Refused, WrongState
 from service.settings import Settings
 from service.shipped import code_hash
@@ -26,6 +28,7 @@ from service.store.outbox import Outgoing, message_id
 from service.tokens import Tokens
 
 Progress = Callable[[int, int | None, str], None] | None
+MANY = 2_000  # digests from which on starting processes takes less time than it saves
 TRIED = 20  # digests that are said again before any is sent
 LONGEST_NOTE = 1500  # characters: a few words of the coordinator's own
 
@@ -107,24 +110,46 @@ def render_all(
     readers: Sequence[Subscriber],
     more_names: frozenset[str],
     progress: Progress,
+    processes: int = 0,
 ) -> dict[str, str]:
     """The canonical hash of every reader's digest; UnsafeText if the gate marks a word in any of them.
 
-    `more_names` are names that came after the draft, which a note could hold.
+    `more_names` are names that came after the draft, which a note could hold. Many digests are read on all
+    cores, unless `processes` says on how many.
     """
     if len(edition.note) > LONGEST_NOTE:
         raise Refused(f"the note has {len(edition.note)} characters; shorten it to {LONGEST_NOTE}, to be read in a ute")
     named = names(known) | more_names
     gate.refuse({"note": edition.note}, named, _public(known))
+    shared = _Reading(edition, composed.statements, book, named, allowed(None, edition.head, known))
+    items = ((composed.slips[reader.id], _own(reader, known)) for reader in readers)
     found = {}
-    for done, reader in enumerate(readers):
-        rendered = _rendered(edition, composed.slips[reader.id], composed.statements, book)
-        texts = {f"{reader.id} {where}": text for where, text in gate.texts_of(rendered).items()}
-        gate.refuse(texts, named, allowed(reader, edition.head, known))
-        found[reader.id] = canonical_hash(rendered)
-        if progress:
-            progress(done + 1, len(readers), "Reading every digest once more")
+    with Composers(_read, shared, processes or (0 if len(readers) > MANY else 1)) as composers:
+        for reader, hash in zip(readers, composers.each(items), strict=True):
+            found[reader.id] = hash
+            if progress:
+                progress(len(found), len(readers), "Reading every digest once more")
     return found
+
+
+@dataclass(frozen=True, slots=True)
+class _Reading:
+    """What the reading of all digests of an edition shares."""
+
+    edition: Edition
+    statements: Mapping[str, Statement]
+    book: Book
+    named: frozenset[str]
+    allowed: frozenset[str]
+
+
+def _read(shared: _Reading, item: tuple[Slip, frozenset[str]]) -> str:
+    """The canonical hash of one digest that passed the gate; `item` has the slip and the reader's own names."""
+    slip, own = item
+    rendered = _rendered(shared.edition, slip, shared.statements, shared.book)
+    texts = {f"{slip.subscriber} {where}": text for where, text in gate.texts_of(rendered).items()}
+    gate.refuse(texts, shared.named, shared.allowed | own)
+    return canonical_hash(rendered)
 
 
 def names(known: Known) -> frozenset[str]:
@@ -135,8 +160,12 @@ def names(known: Known) -> frozenset[str]:
 
 def allowed(reader: Subscriber | None, head: Head, known: Known) -> frozenset[str]:
     """What a reader may see named: public places, who signed, and their own paddocks."""
-    own = {known.paddocks[id].name for id in (reader.paddocks if reader else ()) if id in known.paddocks}
+    own = _own(reader, known) if reader else frozenset()
     return _public(known) | own | ({head.signed_by} - {""})
+
+
+def _own(reader: Subscriber, known: Known) -> frozenset[str]:
+    return frozenset(known.paddocks[id].name for id in reader.paddocks if id in known.paddocks)
 
 
 def _public(known: Known) -> frozenset[str]:

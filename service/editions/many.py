@@ -7,11 +7,13 @@ so memory stays flat however many readers there are.
 
 import gc
 import os
+import signal
 from collections import deque
 from collections.abc import Callable, Iterable, Iterator, Sequence
 from concurrent.futures import Future, ProcessPoolExecutor
 from itertools import islice
-from multiprocessing import get_context
+from multiprocessing import get_context, parent_process
+from threading import Thread
 from typing import Any, Generic, TypeVar
 
 Shared = TypeVar("Shared")
@@ -66,8 +68,18 @@ class Composers(Generic[Shared, Item, Made]):
 def _begin(work: Callable[[Any, Any], Any], shared: Any) -> None:
     global _here
     _here = work, shared
+    signal.signal(signal.SIGINT, signal.SIG_IGN)  # Ctrl-C is for the caller, who ends us
+    Thread(target=_end_with_caller, daemon=True).start()
     gc.freeze()  # what is here stays; and what the work keeps of readers' digests holds no cycles
     gc.set_threshold(RARELY)
+
+
+def _end_with_caller() -> None:
+    """However it ends: a caller that was killed can tell nobody to stop."""
+    caller = parent_process()
+    if caller is not None:
+        caller.join()
+        os._exit(1)
 
 
 def _make(chunk: Sequence[Any]) -> list[Any]:

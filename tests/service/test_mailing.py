@@ -1,5 +1,6 @@
 """From a signed edition to its mails: what was signed is sent, or nothing."""
 
+from dataclasses import replace
 from datetime import date, timedelta
 from email import message_from_bytes, policy
 from pathlib import Path
@@ -10,9 +11,10 @@ from sqlalchemy import text, update
 from service import mailing, pipeline
 from service.clock import SetClock
 from service.delivery.sender import Mail
-from service.errors import WrongState
+from service.editions.compose import compose
+from service.errors import UnsafeText, WrongState
 from service.settings import Settings
-from service.store import editions
+from service.store import editions, network
 from service.store.base import Store
 from service.store.leases import Job
 from service.tokens import Tokens
@@ -70,3 +72,30 @@ def test_a_trail_across_versions_says_what_changed_and_compares_hashes(store: St
     with store.writing() as c:
         c.execute(text("UPDATE observation SET note = 'quietly added' WHERE key = 'csv:1'"))
     assert not pipeline.trail(store, ID, "s1")["equal"]
+
+
+def test_reading_all_digests_on_two_cores_is_reading_them_on_one(store: Store) -> None:
+    small_network.fill(store)
+    clock = SetClock(small_network.CUT_OFF)
+    pipeline.draft(store, "north", clock=clock)
+    with store.reading() as c:
+        edition, readers = editions.get(c, ID), network.subscribers(c, "north")
+    there, book, found = pipeline._said(store, "north", edition.as_of)
+    many = [replace(reader, id=f"{reader.id}-{copy}") for copy in range(30) for reader in readers]
+    composed = compose(there, found, book, many)
+    told: list[tuple[int, int | None, str]] = []
+
+    def read(named: frozenset[str], processes: int) -> dict[str, str]:
+        return mailing.render_all(edition, composed, book, there, many, named, lambda *at: told.append(at), processes)
+
+    one = read(frozenset(), 1)
+    assert list(one) == [reader.id for reader in many]
+    assert len(set(one.values())) > 1
+    assert list(read(frozenset(), 2).items()) == list(one.items())
+    assert [at[0] for at in told] == [*range(1, len(many) + 1)] * 2
+    marked = []
+    for processes in (1, 2):
+        with pytest.raises(UnsafeText) as caught:
+            read(frozenset({"Redlegged Earth"}), processes)
+        marked.append((str(caught.value), caught.value.marks))
+    assert marked[0] == marked[1]

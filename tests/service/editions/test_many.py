@@ -1,6 +1,10 @@
 """Composing on all cores gives what composing one by one in plain Jinja2 gives, in the same order."""
 
+import os
+import subprocess
+import sys
 from collections.abc import Iterator
+from pathlib import Path
 
 import pytest
 
@@ -15,6 +19,10 @@ def message(week: int, reader: bench.Reader) -> bytes:
     if reader.number < 0:
         raise UnsafeText("refused", [("note", "none", "why")])
     return bench.composed(week, reader)
+
+
+def process(_shared: None, _item: int) -> int:
+    return os.getpid()
 
 
 def test_two_processes_give_what_one_gives_and_what_plain_jinja_gives() -> None:
@@ -49,3 +57,18 @@ def test_an_error_comes_back_whole(processes: int) -> None:
     with Composers(message, 20, processes) as composers, pytest.raises(UnsafeText) as caught:
         list(composers.each([bad]))
     assert caught.value.marks == (("note", "none", "why"),)
+
+
+def test_processes_end_with_a_caller_that_is_killed() -> None:
+    """Each holds the pipe that its caller was given, so that its end is seen when the last of them is gone."""
+    program = (
+        "import os, signal\n"
+        "from service.editions.many import Composers\n"
+        "from tests.service.editions.test_many import process\n"
+        "with Composers(process, None, 2) as composers:\n"
+        "    print(len({*composers.each(range(1000))} - {os.getpid()}), flush=True)\n"
+        "    os.kill(os.getpid(), signal.SIGKILL)\n"
+    )
+    environment = os.environ | {"PYTHONPATH": str(Path(__file__).parents[3])}
+    done = subprocess.run([sys.executable, "-c", program], env=environment, capture_output=True, text=True, timeout=60)
+    assert int(done.stdout) >= 1
