@@ -172,12 +172,19 @@ def test_a_file_can_not_steer_the_terminal(home: Path) -> None:
     assert "\x1b" not in done.stderr
 
 
+def _heed_ctrl_c() -> None:
+    """Whatever was started in the background ignores Ctrl-C, and so do its children, unless they are told."""
+    signal.signal(signal.SIGINT, signal.SIG_DFL)
+
+
 @pytest.mark.parametrize("how", [signal.SIGINT, signal.SIGTERM])
 def test_a_person_or_the_machine_can_stop_a_command(home: Path, how: signal.Signals) -> None:
     assert not (home / "var" / "leafturn.db-wal").exists()
     rows = "".join(f"s{n},2026-05-10,9001,lucerne_flea,absent,ivy\n" for n in range(200_000))
     (home / "long.csv").write_text(LOOKS.split("\n")[0] + "\n" + rows, encoding="utf-8")
-    with subprocess.Popen([LEAFTURN, "take", "long.csv"], cwd=home, stderr=subprocess.PIPE, text=True) as command:
+    with subprocess.Popen(
+        [LEAFTURN, "take", "long.csv"], cwd=home, stderr=subprocess.PIPE, text=True, preexec_fn=_heed_ctrl_c
+    ) as command:
         while not (home / "var" / "leafturn.db-wal").exists():  # it has opened the store
             assert command.poll() is None
             select([], [], [], 0.02)
