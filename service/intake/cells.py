@@ -8,10 +8,12 @@ different text in a column.
 import re
 from collections.abc import Callable
 from datetime import UTC, date, datetime
-from typing import Any
+from typing import Any, get_args
 
+from rules.records import Why
 from service import rows
 from service.intake.frame import Frame
+from service.rulebook.models import Unit
 
 SPACES = " \t\n\v\f\r"
 NUMBER = r"-?\d+(\.\d+)?"
@@ -33,19 +35,8 @@ WHOLE = {"stage": (0, 99), "units_sampled": (1, 100_000), "units_per_spot": (1, 
 CHOICES = {
     "status": ("present", "absent"),
     "confidence": ("sure", "fairly sure", "unsure"),
-    "why": ("routine", "asked", "drawn by lot", "saw damage", "field day", "unknown"),
-    "unit": (
-        "per_plant",
-        "per_100cm2",
-        "per_m2",
-        "per_metre_row",
-        "per_half_metre_row",
-        "holes_per_leaf",
-        "per_10_sweeps",
-        "per_trap_night",
-        "per_refuge",
-        "percent_plants",
-    ),
+    "why": tuple(reason.value for reason in Why),
+    "unit": get_args(Unit),
 }
 SCALES = {"bbch": "BBCH", "zadoks": "Zadoks"}
 DAYS = ("day", "serviced_on", "treated_on")
